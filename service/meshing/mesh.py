@@ -1,0 +1,41 @@
+"""A simplicial mesh whose element shapes are known to full relative accuracy."""
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+
+@dataclass(frozen=True)
+class Mesh:
+    """Simplices in d dimensions, in normalised coordinates.
+
+    Next to a strongly graded corner, differences of vertex coordinates lose all digits; the bounds
+    therefore never use coordinates, only ``spans``, which the mesh generator carries along exactly.
+
+    points : (nv, d) vertices, approximate; one mesh unit is ``unit`` of the user's length unit.
+    cells : (nc, d+1) vertex numbers, ascending in each row.
+    spans : (nc, d, d); ``spans[c, :, i]`` is the vector from vertex 0 to vertex i+1 of cell c (the
+        Jacobian of the map from the unit simplex).
+    facets : (nf, d) vertex numbers, ascending in each row.
+    cell_facets : (nc, d+1) facet opposite to vertex i.
+    facet_cells : (nf, 2) the cells on both sides, the second -1 on the boundary.
+    part : (nf,) index of the boundary part, -1 inside.
+    unit : length of one mesh unit in the user's length unit, a power of two.
+    shape_error : bound of ||F|| where the true Jacobian of every cell is spans (I + F).
+    """
+
+    points: NDArray[np.float64]
+    cells: NDArray[np.int64]
+    spans: NDArray[np.float64]
+    facets: NDArray[np.int64]
+    cell_facets: NDArray[np.int64]
+    facet_cells: NDArray[np.int64]
+    part: NDArray[np.int64]
+    unit: float
+    shape_error: float
+
+    @property
+    def dimension(self) -> int:
+        """Space dimension d."""
+        return int(self.cells.shape[1]) - 1
