@@ -1,0 +1,125 @@
+"""Fluxes with prescribed divergence and least energy: the dual half of every sharp bound.
+
+Given functions h_i, find Raviart-Thomas fields s_i with div s_i = h_i and s_i . n = 0 off the Dirichlet part that minimise
+int G^-1 s . s. Inside a cell the divergence fixes the source bubbles at once and the divergence-free bubbles are eliminated;
+between cells, the multiplier of normal continuity solves one sparse symmetric positive definite system (hybridisation; Arnold and
+Brezzi, RAIRO 19 (1985) 7-32). Whatever rounding leaves of the divergence is evaluated afterwards, never assumed zero.
+"""
+
+from dataclasses import dataclass
+from functools import cached_property
+
+import numpy as np
+from numpy.typing import NDArray
+
+from service.bounds.condensed import Numbering, assemble, positive_solver
+from service.bounds.ritz import Gram, gram
+from service.bounds.rounding import gamma
+from service.elements.reference import REFERENCE_ERROR, FluxReference, flux_reference
+from service.forms.pencil import Pencil
+
+Array = NDArray[np.float64]
+
+REGULARISATION = 1e-12
+"""Relative compressibility that keeps the multiplier system definite without a Dirichlet part."""
+
+
+@dataclass(frozen=True)
+class FluxSpace:
+    """Raviart-Thomas fields of one order; a field is stored by its coefficients (nc, n, m) on every cell.
+
+    Coefficients of the two cells at a facet are opposite to the bit, so that normal traces match exactly.
+    """
+
+    pencil: Pencil
+    order: int
+
+    @property
+    def reference(self) -> FluxReference:
+        """Tensors on the unit simplex."""
+        return flux_reference(self.pencil.mesh.dimension, self.order)
+
+    @cached_property
+    def _energy(self) -> Array:
+        """(nc, n', n') local energies of facet functions and divergence-free bubbles."""
+        reference, d = self.reference, self.pencil.mesh.dimension
+        used = reference.facet + reference.free
+        tensor = reference.mass[:, :, :used, :used].reshape(d * d, -1)
+        return np.asarray((self.pencil.flux_metric.reshape(-1, d * d) @ tensor).reshape(-1, used, used))
+
+    def apply(self, fields: Array) -> Array:
+        """Local energy matrices times coefficients."""
+        d, metric = self.pencil.mesh.dimension, self.pencil.flux_metric
+        result = np.zeros_like(fields)
+        for a in range(d):
+            for b in range(d):
+                result += metric[:, a, b, None, None] * (self.reference.mass[a, b] @ fields)
+        return result
+
+    def energy_gram(self, fields: Array) -> Gram:
+        """Inner products int G^-1 s_i . s_j."""
+        diagonal = np.diag(np.trace(self.reference.mass))
+        weights = 1.01 * np.linalg.norm(self.pencil.flux_metric, axis=(1, 2))[:, None] * diagonal
+        d = self.pencil.mesh.dimension
+        return gram(fields, self.apply(fields), weights, 2 * len(diagonal) + 2 * d**2 + 8)
+
+    def equilibrate(self, sources: Array) -> Array:
+        """Fields (nc, n, m) whose divergences are the given polynomials, up to rounding.
+
+        sources : (nc, q, m) moments of h_i times the Jacobian against the orthonormal polynomials of the unit simplex.
+        """
+        mesh, reference = self.pencil.mesh, self.reference
+        cells, columns = len(mesh.cells), sources.shape[2]
+        facet, free = reference.facet, reference.free
+        per_facet = facet // (mesh.dimension + 1)
+
+        bubbles = np.zeros((cells, reference.mass.shape[-1], columns))
+        bubbles[:, facet + free :] = sources[:, 1:]
+        load = -self.apply(bubbles)[:, : facet + free]
+        # Divergence-free bubbles out of the way.
+        inner = np.linalg.inv(self._energy[:, facet:, facet:])
+        coupling = inner @ self._energy[:, facet:, :facet]
+        schur = self._energy[:, :facet, :facet] - self._energy[:, :facet, facet:] @ coupling
+        reduced = load[:, :facet] - coupling.transpose(0, 2, 1) @ load[:, facet:]
+        # Facet coefficients with the right outflow: f = S^-1 (load - multiplier - c y), c . f = total.
+        outflow = reference.divergence[0, :facet]
+        inverse = np.linalg.inv(schur)
+        spread = inverse @ outflow
+        stiffness = np.einsum("i,ci->c", outflow, spread) * (1 + REGULARISATION)
+        mobility = inverse - spread[:, :, None] * spread[:, None, :] / stiffness[:, None, None]
+        particular = mobility @ reduced + (spread / stiffness[:, None])[:, :, None] * sources[:, None, 0]
+
+        free_facets = ~self.pencil.dirichlet
+        start = per_facet * (np.cumsum(free_facets) - 1)
+        per = np.where(free_facets[:, None], start[:, None] + np.arange(per_facet), -1)
+        numbering = Numbering(per[mesh.cell_facets].reshape(cells, -1), 0)
+        factor = positive_solver(assemble(mobility, numbering.skeleton, numbering.shared))
+        multiplier = factor.solve(numbering.gather.T @ particular.reshape(-1, columns))
+        on_cells = (numbering.gather @ multiplier).reshape(cells, facet, columns)
+        outflows = self._conforming(particular - mobility @ on_cells)
+        remainder = inner @ load[:, facet:] - coupling @ outflows
+        return np.concatenate([outflows, remainder, sources[:, 1:]], axis=1)
+
+    def _conforming(self, outflows: Array) -> Array:
+        """Facet coefficients made opposite on both sides and zero on the Neumann part."""
+        mesh = self.pencil.mesh
+        cells, _, columns = outflows.shape
+        faces = mesh.dimension + 1
+        shaped = outflows.reshape(cells, faces, -1, columns)
+        first = mesh.facet_cells[mesh.cell_facets, 0] == np.arange(cells)[:, None]
+        sign = np.where(first, 1.0, -1.0)[:, :, None, None]
+        total = np.zeros((len(mesh.facets), shaped.shape[2], columns))
+        np.add.at(total, mesh.cell_facets, sign * shaped)
+        boundary = mesh.facet_cells[:, 1] < 0
+        factor = np.where(boundary, np.where(self.pencil.dirichlet, 1.0, 0.0), 0.5)
+        mean = total * factor[:, None, None]
+        return np.asarray((sign * mean[mesh.cell_facets]).reshape(outflows.shape))
+
+    def divergence_moments(self, fields: Array) -> tuple[Array, Array]:
+        """Moments (nc, q, m) of the divergence times the Jacobian, and a bound (nc, m) of the rounding of each."""
+        divergence = self.reference.divergence
+        size = np.linalg.norm(divergence, axis=0) + REFERENCE_ERROR * np.sqrt(
+            np.diag(np.trace(self.reference.mass))
+        )
+        relative = 2 * (REFERENCE_ERROR + gamma(2 * divergence.shape[1]))
+        return divergence @ fields, relative * np.einsum("n,cnm->cm", size, np.abs(fields))
