@@ -1,0 +1,122 @@
+"""From a plane domain to a graded mesh: the one entry to meshing."""
+
+import numpy as np
+from numpy.typing import NDArray
+
+from service.errors import ComputationError
+from service.meshing.corners import interior_angles, layer_counts, singular_exponents
+from service.meshing.fill import fill, meshing_failed
+from service.meshing.grade import grade
+from service.meshing.mesh import Mesh
+from service.meshing.normalise import normalise
+from service.meshing.separate import separate
+from service.meshing.sizing import Subdivision, size_function, subdivide, vertex_sizes
+from service.meshing.triangulation import UNIT_ROUNDOFF, Triangulation, as_mesh, base_spans
+from service.problem.domain import PlaneDomain
+
+_REACH = 3.0
+
+
+def mesh_domain(domain: PlaneDomain, *, size: float, target: float, max_cells: int = 200_000) -> Mesh:
+    """A conforming triangulation of a connected polygon, graded towards its singular corners.
+
+    Vertex i of ``domain.points`` is vertex i of the mesh. The same input gives the same bits.
+
+    Parameters
+    ----------
+    domain : a connected domain whose loops are simple, disjoint and oriented as documented there.
+    size : largest edge length, in mesh units (the diameter of the domain is in [1, 2)). Edges on the
+        boundary keep to it, inner ones nearly so.
+    target : relative accuracy wanted in the eigenvalue; decides how deep the grading goes.
+    max_cells : largest number of triangles allowed.
+
+    Raises
+    ------
+    ComputationError
+        ``domain-not-connected``, ``mesh-too-large`` or ``meshing-failed``, with advice.
+    """
+    if domain.components != 1:
+        raise ComputationError(
+            "domain-not-connected",
+            "The domain is not connected",
+            f"The domain has {domain.components} pieces that do not touch along an edge. "
+            "Ask for each piece by itself; the constant of the whole is the largest of theirs.",
+        )
+    frame = normalise(domain.points)
+    points, edges = frame.points, domain.edges
+    dirichlet = np.array([part.condition == "dirichlet" for part in domain.parts])[domain.part]
+    exponents = singular_exponents(interior_angles(domain.points, edges), edges, dirichlet)
+
+    wanted = vertex_sizes(points, edges, size)
+    candidates = layer_counts(exponents, _REACH * wanted, target) > 0
+    sizes = size_function(points, wanted, size)
+    least = np.where(candidates[edges].all(axis=1), 2, 1).astype(np.int64)
+    cut = subdivide(points, edges, sizes, least)
+    _check_count(len(cut.edges), max_cells)
+
+    every, triangles = fill(cut.points, cut.edges, domain.loops[cut.parent], sizes)
+    reach = np.minimum(_longest_at(every, triangles)[: len(points)], _REACH * wanted)
+    layers = np.zeros(len(every), dtype=np.int64)
+    layers[: len(points)] = layer_counts(exponents, reach, target)
+    every, triangles = separate(every, triangles, layers > 0)
+    layers = np.concatenate([layers, np.zeros(len(every) - len(layers), dtype=np.int64)])
+    _check_count(len(triangles) + 2 * int(layers[triangles].sum()), max_cells)
+
+    spans, error = base_spans(every, triangles, _displacements(cut, points, edges, len(every)))
+    base = Triangulation(every, triangles, spans, error, cut.edges, domain.part[cut.parent])
+    _check_cover(base, points, edges, domain.loops)
+    return as_mesh(grade(base, layers), frame)
+
+
+def _check_count(cells: int, max_cells: int) -> None:
+    if cells > max_cells:
+        raise ComputationError(
+            "mesh-too-large",
+            "The mesh would be too large",
+            f"The domain needs more than {max_cells} triangles (about {cells} at least). Raise the "
+            "limit, ask for a coarser tolerance, or simplify the outline.",
+        )
+
+
+def _longest_at(points: NDArray[np.float64], triangles: NDArray[np.int64]) -> NDArray[np.float64]:
+    """Length of the longest edge at each vertex, (nv,)."""
+    longest = np.zeros(len(points))
+    for start, end in ((0, 1), (1, 2), (2, 0)):
+        ends = triangles[:, [start, end]]
+        length = np.hypot(*(points[ends[:, 1]] - points[ends[:, 0]]).T)
+        np.maximum.at(longest, ends[:, 0], length)
+        np.maximum.at(longest, ends[:, 1], length)
+    return longest
+
+
+def _displacements(
+    cut: Subdivision, points: NDArray[np.float64], edges: NDArray[np.int64], count: int
+) -> NDArray[np.float64]:
+    """Bound of the distance of each base vertex to its true place, for each coordinate, (nv, 2).
+
+    Coordinates are non-negative. A vertex of the polygon is off by one rounding, u times its
+    coordinate. A point A + t(B − A) inside an edge inherits at most that of the larger end and adds
+    three roundings of numbers no larger: below 5u max(A, B). Inner vertices are where they are.
+    """
+    corners = 2 * UNIT_ROUNDOFF * points
+    inner = 5 * UNIT_ROUNDOFF * points[edges[cut.host]].max(axis=1)
+    rest = np.zeros((count - len(cut.points), 2))
+    return np.vstack([corners, inner, rest])
+
+
+def _check_cover(
+    mesh: Triangulation, points: NDArray[np.float64], edges: NDArray[np.int64], loops: NDArray[np.int64]
+) -> None:
+    """The triangles have the polygon's area and Euler characteristic, and no other boundary."""
+    first, second = mesh.spans[:, :, 0], mesh.spans[:, :, 1]
+    doubled = first[:, 0] * second[:, 1] - first[:, 1] * second[:, 0]
+    start, end = points[edges[:, 0]], points[edges[:, 1]]
+    area = (start[:, 0] * end[:, 1] - start[:, 1] * end[:, 0]).sum()
+    length = np.hypot(*(end - start).T).sum()
+    if (doubled <= 0).any() or abs(doubled.sum() - area) > 1e-12 * area + 1e-13 * length:
+        raise meshing_failed("The triangles do not cover the domain exactly once.")
+    vertices = len(np.unique(mesh.cells))
+    facets = (3 * len(mesh.cells) + len(mesh.boundary)) / 2
+    euler = vertices - facets + len(mesh.cells)
+    if vertices != len(mesh.points) or euler != 2 - len(np.unique(loops)):
+        raise meshing_failed("The triangles do not fit together like the domain.")
