@@ -17,9 +17,7 @@ def grade(mesh: Triangulation, layers: NDArray[np.int64]) -> Triangulation:
 
     With a = A − V, b = B − V and σ = 1/4 there are new points V + σ^k a and V + σ^k b, k = 1 … n, one
     small triangle at V and n trapezoids, each cut along its shorter diagonal. Their spans are σ^{k−1}
-    times exact combinations of a and b. Each edge vector of a layer is σ^{k−1} times a convex
-    combination (up to sign) of two of a, b and b − a, for instance b − a/4 = ¾b + ¼(b − a), so the
-    parent's error bound times σ^{k−1} holds for it.
+    times combinations of a and b, formed without rounding (see ``triangulation``).
 
     Parameters
     ----------
@@ -38,14 +36,14 @@ def grade(mesh: Triangulation, layers: NDArray[np.int64]) -> Triangulation:
     a, b = places[:, :, 1] - places[:, :, 0], places[:, :, 2] - places[:, :, 0]
 
     rays = _Rays(mesh, layers)
-    cells, spans, errors = _fans(corner, a, b, mesh.edge_error[graded], count[graded], rays)
+    cells, spans = _fans(corner, a, b, count[graded], rays)
     boundary, part = _cut_boundary(mesh, layers, rays)
     kept = count == 0
     return Triangulation(
         points=np.vstack([mesh.points, rays.points]),
         cells=np.vstack([mesh.cells[kept], cells]),
         spans=np.concatenate([mesh.spans[kept], spans]),
-        edge_error=np.vstack([mesh.edge_error[kept], errors]),
+        shape_error=mesh.shape_error,
         boundary=boundary,
         part=part,
     )
@@ -82,11 +80,10 @@ def _fans(
     corner: NDArray[np.int64],
     a: NDArray[np.float64],
     b: NDArray[np.float64],
-    error: NDArray[np.float64],
     count: NDArray[np.int64],
     rays: _Rays,
-) -> tuple[NDArray[np.int64], NDArray[np.float64], NDArray[np.float64]]:
-    """Cells, spans and error bounds of the fans of the triangles with rows (V, A, B) in ``corner``."""
+) -> tuple[NDArray[np.int64], NDArray[np.float64]]:
+    """Cells and spans of the fans of the triangles with rows (V, A, B) in ``corner``."""
     vertex, far_a, far_b = corner.T
     scale = LAYER_RATIO ** count.astype(np.float64)
     tips = np.column_stack([vertex, rays.number(vertex, far_a, count), rays.number(vertex, far_b, count)])
@@ -107,12 +104,7 @@ def _fans(
     upper_spans = _choose(at_a, (from_a, base), (-base, from_b))
     shrink = LAYER_RATIO ** outer.astype(np.float64)
     ring_spans = [spans[parent] * shrink[:, None, None] for spans in (lower_spans, upper_spans)]
-    ring_error = error[parent] * shrink[:, None]
-    return (
-        np.vstack([tips, lower, upper]),
-        np.concatenate([tip_spans, *ring_spans]),
-        np.vstack([error * scale[:, None], ring_error, ring_error]),
-    )
+    return np.vstack([tips, lower, upper]), np.concatenate([tip_spans, *ring_spans])
 
 
 def _choose(

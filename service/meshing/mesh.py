@@ -22,7 +22,8 @@ class Mesh:
     facet_cells : (nf, 2) the cells on both sides, the second -1 on the boundary.
     part : (nf,) index of the boundary part, -1 inside.
     unit : length of one mesh unit in the user's length unit, a power of two.
-    shape_error : bound of ||F|| where the true Jacobian of every cell is spans (I + F).
+    shape_error : bound of the spectral norm of F where the true Jacobian of every cell is (I + F) spans:
+        x -> (I + F) x takes the computed cell to the true one.
     """
 
     points: NDArray[np.float64]

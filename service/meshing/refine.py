@@ -14,8 +14,8 @@ def refine(mesh: Mesh) -> Mesh:
     lexicographic order. Then the children of (x₀, x₁, x₂), x₀ < x₁ < x₂, are in ascending order as
     (x₀, x₀₁, x₀₂), (x₀₁, x₁, x₁₂), (x₀₂, x₁₂, x₂) with the parent's spans halved, and
     (x₀₁, x₀₂, x₁₂) with spans (b − a)/2 and b/2: J. Bey, Tetrahedral grid refinement, Computing 55
-    (1995) 355–378, in two dimensions. Nothing is rounded, and ``shape_error`` is the parent's (see
-    ``triangulation.shape_error``).
+    (1995) 355–378, in two dimensions. Nothing is rounded, so ``shape_error`` is the parent's (see
+    ``triangulation``).
     """
     vertex, middle = _renumber(mesh)
     x0, x1, x2 = vertex[mesh.cells].T
