@@ -71,7 +71,8 @@ def layer_counts(
     Parameters
     ----------
     exponents : singular exponents α.
-    sizes : size h of the elements at the corner relative to the diameter of the domain.
+    sizes : size h of the elements at the corner relative to the distance over which the solution
+        changes there, usually the diameter of the domain (see ``scales``).
     target : relative accuracy wanted in the eigenvalue.
     """
     weight = np.minimum(1.0, 2 * np.abs(exponents - np.maximum(1.0, np.rint(exponents))))

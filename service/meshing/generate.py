@@ -9,6 +9,7 @@ from service.meshing.fill import fill, meshing_failed
 from service.meshing.grade import grade
 from service.meshing.mesh import Mesh
 from service.meshing.normalise import normalise
+from service.meshing.scales import local_scales
 from service.meshing.separate import separate
 from service.meshing.sizing import Subdivision, size_function, subdivide, vertex_sizes
 from service.meshing.triangulation import UNIT_ROUNDOFF, Triangulation, as_mesh, base_spans
@@ -34,30 +35,40 @@ def mesh_domain(domain: PlaneDomain, *, size: float, target: float, max_cells: i
     ------
     ComputationError
         ``domain-not-connected``, ``mesh-too-large`` or ``meshing-failed``, with advice.
+    ValueError
+        When the edges do not form closed loops through all points.
     """
     if domain.components != 1:
         raise ComputationError(
             "domain-not-connected",
             "The domain is not connected",
-            f"The domain has {domain.components} pieces that do not touch along an edge. "
-            "Ask for each piece by itself; the constant of the whole is the largest of theirs.",
+            f"The domain has {domain.components} pieces. Ask for each piece by itself.",
         )
+    everyone = np.arange(len(domain.points))
+    if not all(np.array_equal(np.sort(end), everyone) for end in domain.edges.T):
+        raise ValueError("every point must start one edge and end one")
     frame = normalise(domain.points)
     points, edges = frame.points, domain.edges
     dirichlet = np.array([part.condition == "dirichlet" for part in domain.parts])[domain.part]
-    exponents = singular_exponents(interior_angles(domain.points, edges), edges, dirichlet)
+    # The given points, scaled only: their differences are as exact as they can be.
+    angles = interior_angles(domain.points / frame.unit, edges)
+    exponents = singular_exponents(angles, edges, dirichlet)
 
     wanted = vertex_sizes(points, edges, size)
-    candidates = layer_counts(exponents, _REACH * wanted, target) > 0
+    scales = local_scales(points, edges, dirichlet)
+    candidates = layer_counts(exponents, _REACH * wanted / scales, target) > 0
     sizes = size_function(points, wanted, size)
     least = np.where(candidates[edges].all(axis=1), 2, 1).astype(np.int64)
     cut = subdivide(points, edges, sizes, least)
-    _check_count(len(cut.edges), max_cells)
+    if len(np.unique(cut.points, axis=0)) < len(cut.points):
+        raise meshing_failed("Two vertices coincide.")
+    # k boundary edges need k − 2 triangles at least; triangles of edges up to 1.5 size cover size² each.
+    _check_count(max(len(cut.edges) - 2, int(_area(points, edges) / size**2)), max_cells)
 
     every, triangles = fill(cut.points, cut.edges, domain.loops[cut.parent], sizes)
     reach = np.minimum(_longest_at(every, triangles)[: len(points)], _REACH * wanted)
     layers = np.zeros(len(every), dtype=np.int64)
-    layers[: len(points)] = layer_counts(exponents, reach, target)
+    layers[: len(points)] = layer_counts(exponents, reach / scales, target)
     every, triangles = separate(every, triangles, layers > 0)
     layers = np.concatenate([layers, np.zeros(len(every) - len(layers), dtype=np.int64)])
     _check_count(len(triangles) + 2 * int(layers[triangles].sum()), max_cells)
@@ -104,16 +115,21 @@ def _displacements(
     return np.vstack([corners, inner, rest])
 
 
+def _area(points: NDArray[np.float64], edges: NDArray[np.int64]) -> float:
+    """Area of the polygon, holes subtracted."""
+    start, end = points[edges[:, 0]], points[edges[:, 1]]
+    return float((start[:, 0] * end[:, 1] - start[:, 1] * end[:, 0]).sum() / 2)
+
+
 def _check_cover(
     mesh: Triangulation, points: NDArray[np.float64], edges: NDArray[np.int64], loops: NDArray[np.int64]
 ) -> None:
     """The triangles have the polygon's area and Euler characteristic, and no other boundary."""
     first, second = mesh.spans[:, :, 0], mesh.spans[:, :, 1]
     doubled = first[:, 0] * second[:, 1] - first[:, 1] * second[:, 0]
-    start, end = points[edges[:, 0]], points[edges[:, 1]]
-    area = (start[:, 0] * end[:, 1] - start[:, 1] * end[:, 0]).sum()
-    length = np.hypot(*(end - start).T).sum()
-    if (doubled <= 0).any() or abs(doubled.sum() - area) > 1e-12 * area + 1e-13 * length:
+    area = _area(points, edges)
+    length = np.hypot(*(points[edges[:, 1]] - points[edges[:, 0]]).T).sum()
+    if (doubled <= 0).any() or abs(doubled.sum() / 2 - area) > 1e-12 * area + 1e-13 * length:
         raise meshing_failed("The triangles do not cover the domain exactly once.")
     vertices = len(np.unique(mesh.cells))
     facets = (3 * len(mesh.cells) + len(mesh.boundary)) / 2

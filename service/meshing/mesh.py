@@ -24,6 +24,8 @@ class Mesh:
     unit : length of one mesh unit in the user's length unit, a power of two.
     shape_error : bound of the spectral norm of F where the true Jacobian of every cell is (I + F) spans:
         x -> (I + F) x takes the computed cell to the true one.
+    origin : (d,) the user's coordinates of the mesh's origin: a point x of the mesh is the user's
+        origin + unit x. Empty for a mesh that has no user's coordinates.
     """
 
     points: NDArray[np.float64]
@@ -35,6 +37,7 @@ class Mesh:
     part: NDArray[np.int64]
     unit: float
     shape_error: float
+    origin: tuple[float, ...] = ()
 
     @property
     def dimension(self) -> int:

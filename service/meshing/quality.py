@@ -29,7 +29,7 @@ def volumes(mesh: Mesh) -> NDArray[np.float64]:
 
 
 def flatness(mesh: Mesh) -> NDArray[np.float64]:
-    """Longest edge over smallest height of every cell, (nc,): 1.15 for an equilateral triangle.
+    """Longest edge over smallest height of every cell, (nc,): 2/√3 for an equilateral triangle.
 
     The height over the facet opposite to vertex i is 1/|∇λ_i|, λ_i the barycentric coordinate.
     """

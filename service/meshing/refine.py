@@ -45,6 +45,7 @@ def refine(mesh: Mesh) -> Mesh:
         part=part,
         unit=mesh.unit,
         shape_error=mesh.shape_error,
+        origin=mesh.origin,
     )
 
 

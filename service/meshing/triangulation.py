@@ -118,6 +118,7 @@ def as_mesh(triangulation: Triangulation, frame: Frame) -> Mesh:
         part=part,
         unit=frame.unit,
         shape_error=triangulation.shape_error,
+        origin=tuple(frame.origin.tolist()),
     )
 
 
