@@ -19,12 +19,12 @@ class Reception:
         self._store = store
         self._engine = engine
         self._bells = bells
-        self._closing = False
+        self.closing = False
 
     @property
     def open(self) -> bool:
         """Whether jobs are accepted and will be started."""
-        return not self._closing and self._engine.ready()
+        return not self.closing and self._engine.ready()
 
     def submit(self, request: Request) -> Job:
         """A new job; successful at once when the same request has been answered before."""
@@ -49,7 +49,7 @@ class Reception:
                 found = await asyncio.to_thread(self._store.find, job.id)
                 job = found or job
                 remaining = deadline - time.monotonic()
-                if job.state.terminal or remaining <= 0 or self._closing:
+                if job.state.terminal or remaining <= 0 or self.closing:
                     break
                 try:
                     await asyncio.wait_for(bell.wait(), min(remaining, _LOOK_AGAIN))
@@ -60,5 +60,5 @@ class Reception:
 
     def close(self) -> None:
         """Let everyone go who waits; jobs go on in the store."""
-        self._closing = True
+        self.closing = True
         self._bells.ring_all()

@@ -1,0 +1,33 @@
+"""What the handlers work with, put together once per application."""
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+from typing import cast
+
+from starlette.requests import Request
+
+from service.jobs.reception import Reception
+from service.jobs.store import Store
+from service.processes.base import Process
+from service.settings import Settings
+
+
+@dataclass(frozen=True)
+class Services:
+    """Settings, processes by id, and the jobs."""
+
+    settings: Settings
+    processes: Mapping[str, Process]
+    store: Store
+    reception: Reception
+
+
+def of(request: Request) -> Services:
+    """The services of the application that answers ``request``."""
+    return cast(Services, request.app.state.services)
+
+
+def base(request: Request) -> str:
+    """Root of every link, without a slash at the end: the operator's public URL, else as requested."""
+    public = of(request).settings.public_url
+    return str(public or request.base_url).rstrip("/")
