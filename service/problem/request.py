@@ -2,6 +2,7 @@
 
 from collections.abc import Collection
 from dataclasses import dataclass
+from functools import partial
 from typing import Any
 
 from service.errors import ProblemError
@@ -106,7 +107,9 @@ def _read(inputs: object, known: Collection[str], caps: Limits) -> tuple[Request
     problem = members.read("problem", _read_problem)
     constants = members.read("constants", lambda value, place: _read_constants(value, place, known))
     tolerance = members.get("tolerance", _read_tolerance, DEFAULT_TOLERANCE)
-    limits = members.get("limits", lambda value, place: _read_limits(value, place, caps), _defaults(caps))
+    limits = members.get(
+        "limits", lambda value, place: _read_limits(value, place, caps), default_limits(caps)
+    )
     outline = outline_of(problem.shape) if problem is not None and problem.shape is not None else None
     laid = None
     if problem is not None and problem.boundary is not None and outline is not None:
@@ -193,7 +196,7 @@ def _read_tolerance(value: object, place: Place) -> float | None:
     return read_number(value, place, SMALLEST_TOLERANCE, LARGEST_TOLERANCE)
 
 
-def _defaults(caps: Limits) -> Limits:
+def default_limits(caps: Limits) -> Limits:
     """The limits of a request that states none."""
     return Limits(
         min(DEFAULT_LIMITS.seconds, caps.seconds),
@@ -212,7 +215,7 @@ def _read_limits(value: object, place: Place, caps: Limits) -> Limits | None:
     def unknowns(value: object, place: Place) -> int | None:
         return read_whole_number(value, place, 1, caps.unknowns)
 
-    defaults = _defaults(caps)
+    defaults = default_limits(caps)
     return Limits(
         members.get("seconds", seconds, defaults.seconds),
         members.get("unknowns", unknowns, defaults.unknowns),
