@@ -8,9 +8,11 @@ import numpy as np
 from numpy.typing import NDArray
 
 from service.errors import ComputationError
-from service.meshing.sizing import GROWTH, SizeFunction
+from service.meshing.sizing import SizeFunction
 
 _FRONTAL = 6
+_LINE = 1
+_SURFACE = 1
 _OPTIONS = {
     "General.Terminal": 0,
     "General.NumThreads": 1,
@@ -18,6 +20,8 @@ _OPTIONS = {
     "Mesh.Algorithm": _FRONTAL,
     "Mesh.MeshSizeExtendFromBoundary": 0,
     "Mesh.MeshSizeFromPoints": 0,
+    "Mesh.MeshOnlyEmpty": 1,
+    "Mesh.Renumber": 0,
     "Mesh.RandomFactor": 1e-12,
     "Mesh.RandomSeed": 1,
 }
@@ -57,23 +61,19 @@ def fill(
         with _session():
             _describe(points, edges, loops, sizes)
             gmsh.model.mesh.generate(2)
-            tags, flat, _ = gmsh.model.mesh.getNodes()
-            _, corners = gmsh.model.mesh.getElementsByType(2)
-    except ComputationError:
-        raise
+            tags, flat, _ = gmsh.model.mesh.getNodes(2, _SURFACE)
+            _, corners = gmsh.model.mesh.getElementsByType(2, _SURFACE)
     except Exception as error:
         raise meshing_failed(f"The mesh generator stopped: {error}.") from error
-    tags = np.asarray(tags, dtype=np.int64)
-    found = np.asarray(flat, dtype=np.float64).reshape(-1, 3)[:, :2]
-    given = len(points)
-    if len(tags) < given or not np.array_equal(tags, np.arange(1, len(tags) + 1)):
-        raise meshing_failed("The mesh generator lost points of the boundary.")
-    if np.abs(found[:given] - points).max() > 1e-12:
-        raise meshing_failed("The mesh generator moved points of the boundary.")
-    triangles = np.asarray(corners, dtype=np.int64).reshape(-1, 3) - 1
-    if not len(triangles):
-        raise meshing_failed("The mesh generator returned no triangle.")
-    everything = np.vstack([points, found[given:]])
+    inner = np.asarray(flat, dtype=np.float64).reshape(-1, 3)[:, :2]
+    # The given points have the tags 1 … k.
+    number = np.full(max([len(points), *tags]) + 1, -1, dtype=np.int64)
+    number[1 : len(points) + 1] = np.arange(len(points))
+    number[tags] = len(points) + np.arange(len(tags))
+    triangles = number[np.asarray(corners, dtype=np.int64).reshape(-1, 3)]
+    if not len(triangles) or (triangles < 0).any():
+        raise meshing_failed("The mesh generator returned no mesh of the interior.")
+    everything = np.vstack([points, inner])
     return everything, _counter_clockwise(everything, triangles)
 
 
@@ -92,31 +92,44 @@ def _session() -> Iterator[None]:
 def _describe(
     points: NDArray[np.float64], edges: NDArray[np.int64], loops: NDArray[np.int64], sizes: SizeFunction
 ) -> None:
-    """Tell gmsh the boundary, one transfinite line with two nodes for each piece, and the sizes."""
-    kernel = gmsh.model.geo
-    for tag, (x, y) in enumerate(points.tolist(), start=1):
-        kernel.addPoint(x, y, 0.0, tag=tag)
-    for tag, (start, end) in enumerate(edges.tolist(), start=1):
-        kernel.addLine(start + 1, end + 1, tag)
-        kernel.mesh.setTransfiniteCurve(tag, 2)
-    curves = [kernel.addCurveLoop((np.flatnonzero(loops == loop) + 1).tolist()) for loop in np.unique(loops)]
-    kernel.addPlaneSurface(curves, 1)
-    kernel.synchronize()
+    """Tell gmsh the boundary, one discrete curve with its mesh for each loop, and the sizes."""
+    flat = np.column_stack([points, np.zeros(len(points))])
+    curves = []
+    for loop, curve in enumerate(np.unique(loops).tolist(), start=1):
+        pieces = edges[loops == curve]
+        first, rest = int(pieces[0, 0]), pieces[1:, 0]
+        gmsh.model.addDiscreteEntity(0, loop)
+        gmsh.model.setCoordinates(loop, *flat[first])
+        gmsh.model.mesh.addNodes(0, loop, [first + 1], flat[first])
+        gmsh.model.addDiscreteEntity(1, loop, [loop, loop])
+        gmsh.model.mesh.addNodes(1, loop, rest + 1, flat[rest].ravel())
+        gmsh.model.mesh.addElementsByType(loop, _LINE, [], (pieces + 1).ravel())
+        curves.append(gmsh.model.geo.addCurveLoop([loop]))
+    gmsh.model.geo.addPlaneSurface(curves, _SURFACE)
     gmsh.option.setNumber("Mesh.MeshSizeMax", sizes.size)
+    gmsh.model.geo.synchronize()
     if len(sizes.values):
-        _set_field(sizes)
+        _set_field(flat, sizes, len(curves))
 
 
-def _set_field(sizes: SizeFunction) -> None:
-    """The size function as a background field: for each group linear growth with the distance."""
+def _set_field(flat: NDArray[np.float64], sizes: SizeFunction, taken: int) -> None:
+    """The size function as a background field: for each group linear growth with the distance.
+
+    Points with tags above ``taken`` are added for the vertices that ask for small elements.
+    """
     field = gmsh.model.mesh.field
     grown = []
     for value, members in zip(sizes.values.tolist(), sizes.members, strict=True):
+        tags = range(taken + 1, taken + 1 + len(members))
+        taken += len(members)
+        for tag, vertex in zip(tags, members.tolist(), strict=True):
+            gmsh.model.addDiscreteEntity(0, tag)
+            gmsh.model.setCoordinates(tag, *flat[vertex])
         distance = field.add("Distance")
-        field.setNumbers(distance, "PointsList", (members + 1).tolist())
+        field.setNumbers(distance, "PointsList", list(tags))
         threshold = field.add("Threshold")
         settings = {"InField": distance, "SizeMin": value, "SizeMax": sizes.size}
-        settings |= {"DistMin": 0.0, "DistMax": (sizes.size - value) / GROWTH}
+        settings |= {"DistMin": 0.0, "DistMax": sizes.reach(value)}
         for name, setting in settings.items():
             field.setNumber(threshold, name, setting)
         grown.append(threshold)

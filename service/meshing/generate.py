@@ -16,6 +16,10 @@ from service.meshing.triangulation import UNIT_ROUNDOFF, Triangulation, as_mesh,
 from service.problem.domain import PlaneDomain
 
 _REACH = 3.0
+"""A corner's elements count as no longer than so many times the size asked for there."""
+
+_SMALLEST = 1e-13
+"""Gaps and edges below this have no known shape in double precision (the diameter is about 1)."""
 
 
 def mesh_domain(domain: PlaneDomain, *, size: float, target: float, max_cells: int = 200_000) -> Mesh:
@@ -55,13 +59,13 @@ def mesh_domain(domain: PlaneDomain, *, size: float, target: float, max_cells: i
     exponents = singular_exponents(angles, edges, dirichlet)
 
     wanted = vertex_sizes(points, edges, size)
+    if wanted.min() < _SMALLEST:
+        raise meshing_failed("The outline touches itself, or very nearly so.")
     scales = local_scales(points, edges, dirichlet)
     candidates = layer_counts(exponents, _REACH * wanted / scales, target) > 0
     sizes = size_function(points, wanted, size)
     least = np.where(candidates[edges].all(axis=1), 2, 1).astype(np.int64)
     cut = subdivide(points, edges, sizes, least)
-    if len(np.unique(cut.points, axis=0)) < len(cut.points):
-        raise meshing_failed("Two vertices coincide.")
     # k boundary edges need k − 2 triangles at least; triangles of edges up to 1.5 size cover size² each.
     _check_count(max(len(cut.edges) - 2, int(_area(points, edges) / size**2)), max_cells)
 

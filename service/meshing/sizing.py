@@ -64,7 +64,7 @@ def vertex_sizes(points: NDArray[np.float64], edges: NDArray[np.int64], size: fl
     """Size that each vertex asks for: its shorter edge, and the gap to what else is near it, (n,).
 
     Only gaps inside the domain count: the straight way from the vertex to the other edge starts into
-    the domain and meets that edge from the left.
+    the domain and does not meet that edge from the right.
 
     Parameters
     ----------
@@ -176,10 +176,10 @@ def _fine_pieces(
 def _way_to_edge(
     x: NDArray[np.float64], a: NDArray[np.float64], b: NDArray[np.float64]
 ) -> tuple[NDArray[np.float64], NDArray[np.bool_]]:
-    """Vectors from the points x to the nearest points of the segments ab; whether x lies to the left."""
+    """Vectors from the points x to the nearest points of the segments ab; whether x is not to their right."""
     along, across = b - a, x - a
     t = np.clip((along * across).sum(axis=1) / (along**2).sum(axis=1), 0.0, 1.0)
-    left = along[:, 0] * across[:, 1] - along[:, 1] * across[:, 0] > 0
+    left = along[:, 0] * across[:, 1] - along[:, 1] * across[:, 0] >= 0
     return t[:, None] * along - across, left
 
 
