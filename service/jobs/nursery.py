@@ -64,11 +64,13 @@ class Child:
             return self._process.exitcode
 
     def kill(self) -> None:
-        """End the child and everything it started, at once."""
+        """End the child and everything it started, at once; what it started can outlive it."""
+        with suppress(ProcessLookupError):
+            os.killpg(self.pid, signal.SIGKILL)
         if self.exitcode() is None:
-            for strike in (os.killpg, os.kill):
-                with suppress(ProcessLookupError):
-                    strike(self.pid, signal.SIGKILL)
+            # It may not lead its group yet.
+            with suppress(ProcessLookupError):
+                os.kill(self.pid, signal.SIGKILL)
 
     def close(self) -> None:
         """See the child out, by force after 0.2 s, and give its handles back."""

@@ -4,6 +4,7 @@ import logging
 import threading
 import time
 from collections.abc import Callable, Mapping
+from contextlib import closing
 from dataclasses import dataclass
 from itertools import count
 from typing import Any
@@ -109,18 +110,12 @@ class Supervisors:
         while not self._stopping.is_set():
             try:
                 # Forked ahead of its task: a waiting request does not wait for this.
-                child = self._nursery.child()
-            except OSError:
-                logger.exception("no child could be started")
-                self._stopping.wait(_IDLE)
-                continue
-            try:
-                self._see_through(child)
+                with closing(self._nursery.child()) as child:
+                    self._see_through(child)
             except Exception:
+                # The fork server may just have died, or the database: never the supervisor.
                 logger.exception("a supervisor stumbled and goes on")
                 self._stopping.wait(_IDLE)
-            finally:
-                child.close()
 
     def _see_through(self, child: Child) -> None:
         if not self._hears_from(child):
@@ -216,8 +211,8 @@ class Supervisors:
                     swept = time.monotonic()
                     self._store.expire()
                     self._logs.expire()
-            except SQLAlchemyError:
-                logger.warning("the job store did not answer", exc_info=True)
+            except Exception:
+                logger.exception("the housekeeper stumbled and goes on")
 
     def _renew(self) -> None:
         with self._lock:

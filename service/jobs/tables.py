@@ -16,6 +16,7 @@ from sqlalchemy import (
     event,
     make_url,
 )
+from sqlalchemy.exc import IntegrityError, ProgrammingError
 from sqlalchemy.schema import CreateIndex, CreateTable
 
 metadata = MetaData()
@@ -65,11 +66,22 @@ def connect(url: str) -> Engine:
         event.listen(engine, "connect", _prepare_sqlite)
     else:
         engine = create_engine(url, pool_pre_ping=True)
-    with engine.begin() as connection:
-        connection.execute(CreateTable(jobs, if_not_exists=True))
-        for index in INDEXES:
-            connection.execute(CreateIndex(index, if_not_exists=True))
+    _make(engine, CreateTable(jobs, if_not_exists=True))
+    for index in INDEXES:
+        _make(engine, CreateIndex(index, if_not_exists=True))
     return engine
+
+
+def _make(engine: Engine, element: CreateTable | CreateIndex) -> None:
+    for last in (False, False, True):
+        try:
+            with engine.begin() as connection:
+                connection.execute(element)
+            return
+        except (IntegrityError, ProgrammingError):
+            # Services that start together: IF NOT EXISTS does not see what another is just making.
+            if last:
+                raise
 
 
 def _prepare_sqlite(connection: Any, _record: Any) -> None:
