@@ -88,7 +88,7 @@ class Condensed:
     def build(local: Array, numbering: Numbering) -> "Condensed":
         """Eliminates the bubbles of each local matrix (nc, n, n) and factorises what remains."""
         width = numbering.skeleton.shape[1]
-        inner = np.linalg.inv(local[:, width:, width:])
+        inner: Array = np.linalg.inv(local[:, width:, width:])
         coupling = inner @ local[:, width:, :width]
         schur = local[:, :width, :width] - local[:, :width, width:] @ coupling
         factor = positive_solver(assemble(schur, numbering.skeleton, numbering.shared))

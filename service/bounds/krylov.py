@@ -22,7 +22,13 @@ def orthonormalise(block: Array, mass: Operator) -> Array:
 
 
 def smallest_pairs(
-    inverse: Operator, mass: Operator, start: Array, wanted: int, tolerance: float = 1e-9, depth: int = 4
+    inverse: Operator,
+    mass: Operator,
+    start: Array,
+    wanted: int,
+    tolerance: float,
+    rounds: int = 12,
+    depth: int = 4,
 ) -> tuple[Array, Array]:
     """The smallest eigenvalues of A x = t M x and mass-orthonormal vectors.
 
@@ -33,6 +39,7 @@ def smallest_pairs(
     start : (n, b) starting block, b >= wanted.
     wanted : number of pairs that must have converged.
     tolerance : relative change of the wanted eigenvalues at which iteration ends.
+    rounds : most restarts; a dense cluster is left unresolved then.
     depth : block steps between restarts.
 
     Returns
@@ -43,7 +50,7 @@ def smallest_pairs(
     block = orthonormalise(start, mass)
     before = np.full(wanted, np.inf)
     values, vectors = np.zeros(0), block
-    for _ in range(12):
+    for _ in range(rounds):
         basis = block
         image = inverse(mass(block))
         images = [image]

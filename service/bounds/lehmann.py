@@ -107,10 +107,10 @@ def goerisch_gram(trial: TrialSpace, flux: FluxSpace, functions: Array, ratios: 
     count = residual.shape[1]
     weights = np.broadcast_to(1.01 * scale[:, None], (len(scale), count))
     second = gram(residual, scale[:, None, None] * residual, weights, 2 * count + 8)
-    norms = np.sqrt(np.sum(residual**2, axis=1))
-    # |error_ij| <= |r_i||d_j| + |d_i||r_j| + |d_i||d_j| <= sqrt(size_i size_j) by Cauchy-Schwarz, for any balance > 0.
-    total = 1.01 * np.sum(scale[:, None] * norms**2, axis=0)
-    wrong = 1.01 * np.sum(scale[:, None] * count * error**2, axis=0)
-    balance = np.sqrt(np.max(wrong) / np.max(total)) + UNIT
-    size = second.size + 1.01 * (balance * total + wrong / balance + wrong)
+    # On a cell |error_ij| <= |r_i||d_j| + |d_i||r_j| + |d_i||d_j|, |d| <= error sqrt(count); by Cauchy-Schwarz that is at
+    # most sqrt(size_i size_j) with size = balance r^2 + d^2 / balance + d^2, whatever the balance of the cell.
+    present = scale[:, None] * np.sum(residual**2, axis=1)
+    wrong = scale[:, None] * count * error**2
+    balance = np.sqrt((np.max(wrong, axis=1) + 1e-300) / (np.max(present, axis=1) + 1e-300))[:, None]
+    size = second.size + 1.01 * np.sum(balance * present + wrong / balance + wrong, axis=0)
     return flux.energy_gram(fields) + Gram(second.matrix, size)

@@ -1,148 +1,250 @@
-"""Lower bounds of tau_k by counting: the nonconforming minorant of a pencil.
+"""Lower bounds of tau_k by counting: a nonconforming minorant of a pencil, of any order.
 
-Crouzeix-Raviart interpolation keeps facet means; element by element it turns A - tB into a matrix N_t whose
-negative eigenvalues are at least as many as the negative directions of A - tB. So "N_t has at most k-1 negative eigenvalues"
-proves tau_k >= t. The error of interpolation obeys ||e||_T <= kappa ||G^(1/2) grad e||_T with
-kappa = c_d max |G^(-1/2) edge|: c_2 = 0.1893 (Liu, Appl. Math. Comput. 267 (2015) 341-355), c_3 = 0.3312 (by the
-Poincare inequality of Payne-Weinberger and Bebendorf), c_1 = 1/pi.
+For u in V keep, on each cell, its L2 projection u_T on polynomials of order k + 1 and, on each facet, that of its trace u_F of
+order k. They determine l(w) = int G grad u . grad w for every polynomial w of order k + 1, hence for any R of that order,
+with e = u - R (equal means on the cell),
+
+    int G grad u . grad u = 2 l(R) - int G grad R . grad R + int G grad e . grad e,
+    int G grad e . grad e >= a (|u_T - R|^2 + |u - u_T|^2) / c^2 + (1 - a) w sum_F mean_F (u_F - P_F R)^2.
+
+c is the Poincare constant of the cell in the metric of G: h / j_(1,1) on triangles (Laugesen and Siudeja, J. Differential Equations
+249 (2010) 118-135), h / pi on any simplex (Payne and Weinberger 1960; Bebendorf 2003), h the longest edge. w comes from the
+trace identity: mean_F f^2 = mean_T (f^2 + (2/d) f (x - P) . grad f) <= (c^2 + 2 h c / d) mean_T |grad f|^2.
+While a / c^2 >= t b - p on every cell the term |u - u_T|^2 can be dropped, and A[u] - t B[u] >= N_t[u_T, u_F], a form on
+finitely many unknowns. If N_t has at most k-1 negative eigenvalues then neither does A - tB on V, so tau_k >= t.
+(With k = 0 this is a relative of Crouzeix and Raviart's element; the idea of keeping moments in cells and on facets is that of hybrid high-order
+methods, Di Pietro and Ern, Comput. Methods Appl. Mech. Engrg. 283 (2015) 1-21.)
 """
 
 from dataclasses import dataclass
 from functools import cached_property
-from math import factorial
+from math import factorial, pi
 
 import numpy as np
 from numpy.typing import NDArray
-from scipy.sparse import coo_matrix, csc_matrix
+from scipy.sparse import csc_matrix
 
+from service.bounds.condensed import Condensed, Numbering, assemble
 from service.bounds.inertia import SingularPivot, factorise, smallest_eigenvalue_bound
 from service.bounds.krylov import smallest_pairs
 from service.bounds.rounding import UNIT, gamma
+from service.elements.hybrid import HYBRID_ERROR, HybridReference, hybrid_reference
 from service.forms.pencil import Pencil
 
 Array = NDArray[np.float64]
 
-INTERPOLATION = {1: 0.31830988618379070, 2: 0.1893, 3: 0.3312}
+POINCARE = {1: pi, 2: 3.8317059702075123, 3: pi}
+"""h / POINCARE[d] bounds the Poincare constant of a simplex with longest edge h; rounded down where used."""
+
+SHARE = 0.5
+"""The least share a of the error's energy that is spent on the cell terms."""
 
 
 @dataclass(frozen=True)
 class Minorant:
-    """The Crouzeix-Raviart matrices of a pencil."""
+    """N_t of one order for t up to ``trial``: K - t M, linear in t.
+
+    Raises
+    ------
+    ValueError
+        If ``trial`` is not below ``ceiling(pencil)``.
+    """
 
     pencil: Pencil
+    order: int
+    trial: float
+
+    def __post_init__(self) -> None:
+        if self.trial >= ceiling(self.pencil):
+            raise ValueError("trial value above what the cells allow")
+
+    @property
+    def reference(self) -> HybridReference:
+        """Tensors on the unit simplex."""
+        return hybrid_reference(self.pencil.mesh.dimension, self.order)
 
     @cached_property
-    def stiffness_of_error(self) -> Array:
-        """(nc,) q_T = 1 / kappa_T^2, rounded down."""
+    def numbering(self) -> Numbering:
+        """Facet polynomials of free facets are shared, cell polynomials a cell's own."""
         mesh = self.pencil.mesh
-        corners = np.concatenate([np.zeros((len(mesh.cells), mesh.dimension, 1)), mesh.spans], axis=2)
-        first, second = np.triu_indices(mesh.dimension + 1, 1)
-        edges = corners[:, :, second] - corners[:, :, first]
-        stretched = np.linalg.solve(self.pencil.diffusion, edges)
-        longest = np.max(np.einsum("cai,cai->ci", edges, stretched), axis=1)
-        return np.asarray((1 - 1e-12) / (INTERPOLATION[mesh.dimension] ** 2 * longest))
-
-    @cached_property
-    def _numbering(self) -> NDArray[np.int64]:
-        """(nf,) number of each free facet, -1 on the Dirichlet part."""
         free = ~self.pencil.dirichlet
-        return np.where(free, np.cumsum(free) - 1, -1)
-
-    def _assemble(self, local: Array) -> csc_matrix:
-        """Sparse matrix from local ones (nc, d+1, d+1)."""
-        numbers = self._numbering[self.pencil.mesh.cell_facets]
-        rows = np.broadcast_to(numbers[:, :, None], local.shape)
-        columns = np.broadcast_to(numbers[:, None, :], local.shape)
-        keep = (rows >= 0) & (columns >= 0)
-        size = int(np.sum(~self.pencil.dirichlet))
-        return csc_matrix(coo_matrix((local[keep], (rows[keep], columns[keep])), shape=(size, size)))
+        per_facet = self.reference.trace.shape[1]
+        start = per_facet * (np.cumsum(free) - 1)
+        numbers = np.where(free[:, None], start[:, None] + np.arange(per_facet), -1)
+        return Numbering(
+            numbers[mesh.cell_facets].reshape(len(mesh.cells), -1), self.reference.stiffness.shape[-1]
+        )
 
     @cached_property
-    def _local_stiffness(self) -> Array:
-        d = self.pencil.mesh.dimension
-        gradients = np.vstack([-np.ones(d), np.eye(d)])
-        return np.asarray(gradients @ self.pencil.gradient_metric @ gradients.T * (d**2 / factorial(d)))
-
-    def _local_mass(self, density: Array) -> Array:
-        d = self.pencil.mesh.dimension
-        pattern = 1 - 2 * d / (d + 1) + d**2 * (1 + np.eye(d + 1)) / ((d + 1) * (d + 2))
-        if d == 2:
-            pattern = np.eye(3) / 3  # edge midpoints: exact for quadratics, no rounding off the diagonal
-        return np.asarray((density * self.pencil.jacobian / factorial(d))[:, None, None] * pattern)
-
-    def lowered(self, t: float) -> Array:
-        """(nc,) the potential p q / (p + q) of N_t with p = potential - t weight; needs p + q > 0."""
-        p = self.pencil.potential - t * self.pencil.weight
-        return np.asarray(p * self.stiffness_of_error / (p + self.stiffness_of_error))
+    def _mass(self) -> Array:
+        """(nc,) M on each cell is this number times the identity on the cell polynomials."""
+        return self.pencil.weight * self.pencil.jacobian
 
     @cached_property
-    def ceiling(self) -> float:
-        """Largest t for which the minorant exists on every cell."""
-        return float(np.min((self.pencil.potential + self.stiffness_of_error) / self.pencil.weight))
+    def _local(self) -> tuple[Array, Array]:
+        """K on each cell (nc, n, n), facet unknowns first, and a bound (nc,) of the 2-norm of its error."""
+        pencil, reference = self.pencil, self.reference
+        d = pencil.mesh.dimension
+        cells, q = len(pencil.mesh.cells), reference.stiffness.shape[-1]
+        metric = pencil.gradient_metric
+        stiffness = (metric.reshape(cells, d * d) @ reference.stiffness.reshape(d * d, -1)).reshape(
+            cells, q, q
+        )
+        normal = reference.normals @ metric  # (nc, d+1, d)
+        flux = np.einsum("cfa,fajl->cfjl", normal, reference.slopes).reshape(cells, -1, q)
+        trace = reference.trace.reshape(-1, q)
+        # R = u_T + Z d with d = u_F - P u_T; any Z is allowed, this one is optimal up to rounding.
+        lift = np.zeros((cells, q, trace.shape[0]))
+        lift[:, 1:] = np.linalg.solve(stiffness[:, 1:, 1:], flux.transpose(0, 2, 1)[:, 1:])
 
-    def candidates(self, trial: float, wanted: int) -> Array:
-        """Unproved lower bounds of tau_1 .. tau_wanted, none above ``trial`` < ceiling, from one linear eigenproblem.
+        poincare = poincare_constants(pencil)
+        longest = poincare * POINCARE[d]
+        need = (self.trial * pencil.weight - pencil.potential) * poincare**2
+        share = np.maximum(SHARE, need * (1 + 1e-12))
+        inside = share * pencil.jacobian / poincare**2
+        measure = pencil.jacobian / factorial(d)
+        on_facets = (1 - share) * measure / ((d + 1) * (poincare**2 + 2 * longest * poincare / d))
 
-        The potential of N_t is concave in t, so on 0 <= t <= trial it lies above its chord, which is linear.
-        """
-        at_zero, at_trial = self.lowered(0.0), self.lowered(trial)
-        slope = (at_zero - at_trial) / trial
-        shift = 0.1 * trial
-        matrix = self._assemble(self._local_stiffness + self._local_mass(at_zero + shift * slope))
-        mass = self._assemble(self._local_mass(slope))
-        solver = factorise_loosely(matrix)
-        size = matrix.shape[0]
-        block = min(size, wanted + 3)
-        start = np.random.default_rng(0).standard_normal((size, block))
-        start[:, 0] = 1.0
-        if size <= 40:
-            dense = np.linalg.eigvalsh(np.linalg.inv(mass.toarray()) @ matrix.toarray())
-            values = np.sort(dense)
-        else:
-            values, _ = smallest_pairs(solver, mass.__matmul__, start, wanted, tolerance=1e-6)
-        values = values[:wanted] - shift
-        padded = np.full(wanted, trial)
-        padded[: len(values)] = np.minimum(values, trial)
+        across = lift.transpose(0, 2, 1)
+        both = flux @ lift
+        missed = np.eye(trace.shape[0]) - trace @ lift
+        jumps = both + both.transpose(0, 2, 1) - across @ stiffness @ lift
+        jumps += inside[:, None, None] * (across @ lift)
+        jumps += on_facets[:, None, None] * (missed.transpose(0, 2, 1) @ missed)
+
+        coupling = flux - jumps @ trace
+        own = stiffness - trace.T @ flux - flux.transpose(0, 2, 1) @ trace + trace.T @ jumps @ trace
+        own += (pencil.potential * pencil.jacobian)[:, None, None] * np.eye(q)
+        local = np.concatenate(
+            [
+                np.concatenate([jumps, coupling], axis=2),
+                np.concatenate([coupling.transpose(0, 2, 1), own], axis=2),
+            ],
+            axis=1,
+        )
+        # Errors of the factors (tensors, sums over directions), then of the products, all in the Frobenius norm.
+        relative = 2 * HYBRID_ERROR + gamma(8 * q)
+        size, norm = norms(metric), float(np.linalg.norm(trace))
+        wrong_flux = relative * size * np.linalg.norm(reference.normals) * np.linalg.norm(reference.slopes)
+        wrong_stiffness = relative * size * np.linalg.norm(np.trace(reference.stiffness))
+        reach = norms(lift)
+        wrong_jumps = reach * (2 * wrong_flux + reach * wrong_stiffness) + relative * (
+            2 * reach * norms(flux) + reach**2 * (norms(stiffness) + inside) + on_facets * (norm * reach + d + q) ** 2
+        )
+        wrong = wrong_jumps + relative * norms(jumps)
+        wrong_own = wrong_stiffness + norm * (2 * wrong_flux + 2 * relative * norms(flux) + norm * wrong)
+        error = wrong + wrong_flux + norm * wrong + wrong_own
+        error += relative * np.abs(pencil.potential) * pencil.jacobian * q
+        return (local + local.transpose(0, 2, 1)) / 2, 1.1 * error
+
+    def _with_mass(self, factor: float) -> Array:
+        """K + factor M on each cell."""
+        local = self._local[0].copy()
+        facets = self.numbering.skeleton.shape[1]
+        diagonal = np.arange(facets, local.shape[1])
+        local[:, diagonal, diagonal] += factor * self._mass[:, None]
+        return local
+
+    def candidates(self, wanted: int) -> Array:
+        """Unproved lower bounds of tau_1 .. tau_wanted, none above ``trial``: the eigenvalues of K against M."""
+        shift = 0.1 * self.trial
+        numbering = self.numbering
+        system = Condensed.build(self._with_mass(shift), numbering)
+        shared, cells = numbering.shared, len(self._mass)
+        weights = np.repeat(self._mass, numbering.bubbles)[:, None]
+
+        def inverse(inside: Array) -> Array:
+            return system.solve(np.vstack([np.zeros((shared, inside.shape[1])), inside]))[shared:]
+
+        start = np.random.default_rng(0).standard_normal((cells * numbering.bubbles, wanted + 3))
+        start[:, 0] = 0.0
+        start[:: numbering.bubbles, 0] = 1.0
+        block = start[:, : min(start.shape)]
+        count = min(wanted, block.shape[1])
+        values, _ = smallest_pairs(inverse, lambda v: weights * v, block, count, 1e-5, rounds=4)
+        padded = np.full(wanted, self.trial)
+        found = min(wanted, len(values))
+        padded[:found] = np.minimum(values[:found] - shift, self.trial)
         return padded
+
+    def _condensed(self, factor: float) -> tuple[csc_matrix, float] | None:
+        """Facet matrix of K + factor M with the cell unknowns eliminated, and a bound of its error.
+
+        None where a cell's own block is not safely positive definite. For any W, with r = B - A W, the Schur
+        complement is C - B^T W - W^T B + W^T A W - r^T A^-1 r: no error of the inverse enters unnoticed.
+        """
+        local = self._with_mass(factor)
+        error = self._local[1] + 4 * UNIT * abs(factor) * self._mass
+        facets = self.numbering.skeleton.shape[1]
+        outer, mixed, inner = local[:, :facets, :facets], local[:, facets:, :facets], local[:, facets:, facets:]
+        least = np.linalg.eigvalsh(inner)[:, 0] - error - gamma(100 * inner.shape[1]) * norms(inner)
+        if not np.all(least > 0):
+            return None
+        weights = np.linalg.solve(inner, mixed)
+        residual = mixed - inner @ weights
+        back = mixed.transpose(0, 2, 1) @ weights
+        schur = outer - back - back.transpose(0, 2, 1) + weights.transpose(0, 2, 1) @ inner @ weights
+        far = norms(weights)
+        rounding = gamma(8 * local.shape[1])
+        total = error * (1 + far) ** 2
+        total += rounding * (norms(outer) + 2 * norms(mixed) * far + norms(inner) * far**2)
+        missed = norms(residual) + error * (1 + far) + rounding * (norms(mixed) + norms(inner) * far)
+        total += missed**2 / least
+        # Every facet belongs to two cells at most; the sum of two numbers rounds once more.
+        allowance = 2 * float(np.max(total)) + 2 * gamma(4) * float(np.max(norms(schur)))
+        return assemble(schur, self.numbering.skeleton, self.numbering.shared), allowance
+
+    def count(self, t: float) -> int:
+        """Negative eigenvalues of N_t as computed, without proof; a large number where it cannot be told."""
+        condensed = self._condensed(-t)
+        if condensed is None:
+            return self.numbering.size
+        try:
+            return factorise(condensed[0]).negative
+        except SingularPivot:
+            return self.numbering.size
 
     def certify(self, t: float, count: int) -> float | None:
         """A number t' <= t, hardly smaller, for which tau_(count+1) >= t' is proved; None if it is not.
 
-        With N_t = L D L^T + E: ||E|| I <= eta (K + sM), where K + sM >= c I is proved by a second factorisation and
-        eta = ||E|| / c. Hence (1 + eta) K + M[p_t + eta s] has at most as many negative eigenvalues as D, and
-        N_t' dominates it up to a factor for t' with p_t' (1 + eta) >= p_t + eta s.
+        With the facet matrix of N_t factorised up to E: |E| I <= eta (K + tM), where the facet matrix of K + tM is
+        proved to be >= c I and eta = |E| / c. So (1 + eta) K - (1 - eta) t M has at most as many negative eigenvalues as D,
+        and t' = t (1 - eta) / (1 + eta).
         """
-        if not 0 < t < self.ceiling:
+        if not 0 < t <= self.trial:
             return None
-        local = self._local_stiffness + self._local_mass(self.lowered(t))
-        matrix = self._assemble(local)
-        assembly = float(np.max(self._assemble(np.abs(local)) @ np.ones(matrix.shape[0])))
-        rounding = 4 * gamma(40) * assembly
+        below, above = self._condensed(-t), self._condensed(t)
+        if below is None or above is None:
+            return None
         try:
-            factors = factorise(matrix)
+            factors = factorise(below[0])
             if factors.negative > count:
                 return None
-            support = self._assemble(self._local_stiffness + self._local_mass(t * self.pencil.weight))
-            floor = smallest_eigenvalue_bound(support) - rounding
+            floor = smallest_eigenvalue_bound(above[0]) - above[1]
         except SingularPivot:
             return None
         if floor <= 0:
             return None
-        eta = 1.001 * (factors.residual + rounding) / floor
-        slack = 4 * eta * t + 16 * UNIT * t
-        while slack < 0.5 * t:
-            lowered = self.lowered(t - slack)
-            need = self.lowered(t) + eta * t * self.pencil.weight
-            if np.all(lowered * (1 + eta) >= need + 16 * UNIT * np.abs(lowered)):
-                return t - slack
-            slack *= 4
-        return None
+        eta = 1.001 * (factors.residual + below[1]) / floor
+        return t * (1 - eta) / (1 + eta) * (1 - 8 * UNIT) if eta < 1 else None
 
 
-def factorise_loosely(matrix: csc_matrix):  # type: ignore
-    """A solver for repeated use, without any proof attached."""
-    import qdldl
-    from scipy.sparse import triu
+def norms(matrices: Array) -> Array:
+    """(nc,) Frobenius norms."""
+    return np.asarray(np.linalg.norm(matrices, axis=(1, 2)))
 
-    solver = qdldl.Solver(csc_matrix(triu(matrix)), upper=True)
-    return lambda block: np.column_stack([solver.solve(np.ascontiguousarray(column)) for column in block.T])
+
+def poincare_constants(pencil: Pencil) -> Array:
+    """(nc,) c with |f| <= c |G^(1/2) grad f| for functions of zero mean on a cell, rounded up."""
+    mesh = pencil.mesh
+    corners = np.concatenate([np.zeros((len(mesh.cells), mesh.dimension, 1)), mesh.spans], axis=2)
+    first, second = np.triu_indices(mesh.dimension + 1, 1)
+    edges = corners[:, :, second] - corners[:, :, first]
+    stretched = np.linalg.solve(pencil.diffusion, edges)
+    longest = np.max(np.einsum("cai,cai->ci", edges, stretched), axis=1)
+    return np.asarray(np.sqrt(longest) / POINCARE[mesh.dimension] * (1 + 1e-12))
+
+
+def ceiling(pencil: Pencil) -> float:
+    """The t up to which a minorant exists on these cells."""
+    return float(np.min((1 / poincare_constants(pencil) ** 2 + pencil.potential) / pencil.weight)) * (1 - 1e-9)

@@ -11,9 +11,11 @@ from numpy.typing import NDArray
 from service.bounds.enclosure import UNKNOWN, Enclosure
 from service.bounds.flux import FluxSpace
 from service.bounds.lehmann import goerisch_gram, lower_bounds, upper_bounds
+from service.bounds.minorant import ceiling
 from service.bounds.ritz import TrialSpace
 from service.bounds.rounding import down, up
-from service.bounds.separation import Separation, separate
+from service.bounds.separation import MARGIN, Separation, counted_bound, reachable, separate
+from service.elements.hybrid import MAX_HYBRID_ORDER
 from service.elements.reference import MAX_ORDER
 from service.forms.pencil import Pencil
 from service.meshing.mesh import Mesh
@@ -22,6 +24,15 @@ Array = NDArray[np.float64]
 
 FIRST_ORDER = 3
 """Order of the first look at the spectrum."""
+
+LOOK_AHEAD = 12
+"""How many eigenvalues beyond the wanted one are searched for a gap before counting alone must do."""
+
+FIRST_SIZE = 0.5
+"""Longest edges of the first mesh, in mesh units (the diameter is between 1 and 2)."""
+
+MINORANT_CELLS = 6000
+"""Cells up to which a mesh is refined just to cut the spectrum."""
 
 
 @dataclass(frozen=True)
@@ -60,26 +71,63 @@ def sharpen(
     used = max(cut.count, index)
     functions, ratios = functions[:, :, :used], ratios[:used]
     # A power of two near the wanted ratio: adding and removing it costs next to nothing.
-    shift = 2.0 ** round(math.log2(max(float(ratios[index - 1]), 1e-300)))
+    shift = 2.0 ** round(math.log2(ratios[index - 1]))
     shifted = pencil.shifted(shift)
     trial = TrialSpace(shifted, order)
     mass = trial.mass_gram(functions, shifted.weight)
     energy = trial.gradient_gram(functions) + trial.mass_gram(functions, shifted.potential)
-    error = pencil.coefficient_error
+    error = pencil.ratio_error
     ritz = upper_bounds(energy, mass)[index - 1] - shift
-    above = Enclosure(-math.inf, up(ritz * (1 + error), 4), upper_by=f"Ritz, order {order}")
+    above = Enclosure(-math.inf, up(ritz * (1 + error)), upper_by=f"Ritz, order {order}")
     if not cut.count:
         return above
-    flux = FluxSpace(shifted, order)
-    dual = goerisch_gram(trial, flux, functions, ratios + shift)
-    rho = (cut.rho * (1 - pencil.coefficient_error) + shift) * (1 - 1e-15)
+    dual = goerisch_gram(trial, FluxSpace(shifted, order), functions, ratios + shift)
+    rho = down(cut.rho * (1 - error) + shift)
     below = lower_bounds(energy, mass, dual, rho)[index - 1] - shift
-    lower = down(below * (1 - error), 4) if below > 0 else -math.inf
+    lower = down(below * (1 - error)) if below > 0 else -math.inf
     return above.intersect(Enclosure(lower, math.inf, lower_by=f"Lehmann-Goerisch, flux order {order}"))
 
 
+@dataclass(frozen=True)
+class Prospect:
+    """A first look at the spectrum on a mesh: trial functions of low order, and where the spectrum is cut."""
+
+    ratios: Array
+    functions: Array
+    cut: Separation
+
+
+def look(
+    pencil: Pencil,
+    pencil_on: Callable[[Mesh], Pencil],
+    refined: Callable[[Mesh], Mesh],
+    space: TrialSpace,
+    index: int,
+    cells: int,
+) -> Prospect | float:
+    """The cut of the spectrum, from more and more eigenvalues until a gap shows.
+
+    Returns the factor by which edges must shrink if minorants do not reach the wanted ratio on an affordable
+    refinement of this mesh.
+    """
+    ahead = 3
+    while True:
+        wanted = index + ahead
+        ratios, functions = space.smallest(1.0, wanted, 1e-4, rounds=4)
+        ritz = ratios[:wanted]
+        goal = 1.1 * float(ritz[min(index, len(ritz) - 1)])
+        fine = reachable(pencil, pencil_on, refined, goal, cells)
+        if fine is None:
+            return 0.9 * math.sqrt(MARGIN * ceiling(pencil) / goal)
+        cut = separate(fine, ritz, index) if len(ritz) > index else Separation(0, 0.0, 0.0, fine)
+        dense = float(ritz[-1]) < 1.05 * float(ritz[index - 1]) and len(fine.mesh.cells) > 1500
+        if cut.gap > 0.02 or ahead >= LOOK_AHEAD or len(ritz) < wanted or dense:
+            return Prospect(ratios, functions, cut)
+        ahead *= 2
+
+
 def enclose(
-    mesh_at: Callable[[int], Mesh],
+    mesh_at: Callable[[float], Mesh],
     refined: Callable[[Mesh], Mesh],
     pencil_on: Callable[[Mesh], Pencil],
     index: int,
@@ -89,49 +137,56 @@ def enclose(
 
     Parameters
     ----------
-    mesh_at : mesh of a level 0, 1, 2, ..., each finer than the one before.
+    mesh_at : mesh with edges of at most a given length in mesh units.
     refined : uniform refinement of a mesh.
     pencil_on : the pencil on a mesh.
     index : number of the ratio, from 1.
     budget : when to stop.
     """
     known = UNKNOWN
+    size = FIRST_SIZE
     level = 0
-    cost = 0.0
     while True:
         begun = time.monotonic()
-        mesh = mesh_at(level)
+        mesh = mesh_at(size)
         pencil = pencil_on(mesh)
         space = TrialSpace(pencil, FIRST_ORDER)
-        ratios, functions, cut = look(pencil, pencil_on, mesh, refined, space, index)
-        minorant = Enclosure(cut.lower, math.inf, lower_by="nonconforming minorant, inertia count")
-        known = known.intersect(minorant)
+        prospect = look(pencil, pencil_on, refined, space, index, max(MINORANT_CELLS, 2 * len(mesh.cells)))
+        if isinstance(prospect, float):
+            size *= min(0.5, prospect)
+            continue
+        cut, ratios, functions = prospect.cut, prospect.ratios, prospect.functions
         order = FIRST_ORDER
         widths: list[float] = []
         while True:
-            step = sharpen(pencil, index, cut, order, functions, ratios)
-            known = known.intersect(step)
-            widths.append(step.width)
-            flux_unknowns = len(mesh.facets) * (order + 1)
-            now = time.monotonic()
-            cost = now - begun
-            yield Step(known, mesh, level, order, space.numbering.size + flux_unknowns, cost)
+            found = sharpen(pencil, index, cut, order, functions, ratios)
+            if not math.isfinite(found.lower):
+                rank = min(order, MAX_HYBRID_ORDER)
+                counted = counted_bound(cut.pencil, found.upper, index, rank, budget.width)
+                by = f"nonconforming minorant of order {rank}, inertia count"
+                found = found.intersect(Enclosure(counted, math.inf, lower_by=by))
+            known = known.intersect(found)
+            widths.append(found.width)
+            cost = time.monotonic() - begun
+            unknowns = space.numbering.size + len(mesh.facets) * (order + 1)
+            yield Step(known, mesh, level, order, unknowns, cost)
             if known.width <= budget.width:
                 return
             following = next_order(order, widths, budget.width)
             if following is None:
                 break
             growth = (following / order) ** 3
-            if not budget.affords(cost * growth, int(space.numbering.size * growth)):
+            if not budget.affords(cost * growth, int(unknowns * growth)):
                 return
             begun = time.monotonic()
-            space = TrialSpace(pencil, following)
             used = max(cut.count, index)
+            space = TrialSpace(pencil, following)
             start = space.extend(functions[:, :, : used + 2], order)
-            ratios, functions = space.smallest(float(ratios[index - 1]), used, start)
+            ratios, functions = space.smallest(float(ratios[index - 1]), used, 1e-2 * budget.width, start)
             order = following
         level += 1
-        if not budget.affords(3 * cost, 4 * space.numbering.size):
+        size /= 2
+        if not budget.affords(3 * cost, 3 * unknowns):
             return
 
 
@@ -146,23 +201,3 @@ def next_order(order: int, widths: list[float], target: float) -> int | None:
     rate = math.log(widths[-2] / max(widths[-1], 1e-16))
     missing = math.log(max(widths[-1] / target, 1.0))
     return min(order + (2 if missing > 1.5 * rate else 1), MAX_ORDER)
-
-
-def look(
-    pencil: Pencil,
-    pencil_on: Callable[[Mesh], Pencil],
-    mesh: Mesh,
-    refined: Callable[[Mesh], Mesh],
-    space: TrialSpace,
-    index: int,
-) -> tuple[Array, Array, Separation]:
-    """A first look at the spectrum and the cut: more and more eigenvalues until a gap shows."""
-    ahead = 4
-    while True:
-        wanted = index + ahead
-        ratios, functions = space.smallest(1.0, wanted)
-        ritz = ratios[:wanted]
-        cut = separate(pencil_on, mesh, refined, ritz, index, max(8000, 4 * len(mesh.cells)))
-        if cut.gap > 0.02 or ahead >= 32 or len(ritz) < wanted:
-            return ratios, functions, cut
-        ahead *= 2

@@ -128,7 +128,9 @@ class TrialSpace:
         after[:, :, : before.shape[2]] = before
         return result
 
-    def smallest(self, shift: float, count: int, start: Array | None = None) -> tuple[Array, Array]:
+    def smallest(
+        self, shift: float, count: int, tolerance: float, start: Array | None = None, rounds: int = 12
+    ) -> tuple[Array, Array]:
         """Approximate smallest ratios (b,) and functions (nc, n, b), b >= count if the space is large enough.
 
         ``shift`` makes A + shift B positive definite; ``start`` are functions of this space to begin with.
@@ -145,5 +147,5 @@ class TrialSpace:
             begin[: int(np.max(corners, initial=-1)) + 1, 0] = 1.0
         else:
             begin = numbering.restrict(start)
-        values, vectors = smallest_pairs(system.solve, mass, begin, min(count, begin.shape[1]))
+        values, vectors = smallest_pairs(system.solve, mass, begin, min(count, begin.shape[1]), tolerance, rounds)
         return values - shift, numbering.spread(vectors)

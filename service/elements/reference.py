@@ -5,17 +5,15 @@ The tensors are computed in doubles with quadrature that is exact in exact arith
 for every order in service with multiple-precision arithmetic, and ``REFERENCE_ERROR`` bounds the difference.
 """
 
-from collections.abc import Callable
 from dataclasses import dataclass
 from functools import lru_cache
-from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
 from service.elements import raviart_thomas, scalar
 from service.elements.jet import simplex_dimension, simplex_polynomials
-from service.elements.quadrature import Rule, simplex_rule
+from service.elements.quadrature import simplex_rule
 
 Array = NDArray[np.float64]
 
@@ -62,17 +60,27 @@ class FluxReference:
     free: int
 
 
-def orthonormal(dimension: int, degree: int, values: NDArray[Any]) -> NDArray[Any]:
-    """Orthonormal polynomials on the unit simplex at points (d, n): (q, n)."""
-    jets = np.array([jet[0] for jet in simplex_polynomials(degree, scalar.barycentric(values))])
+def scalar_norms(dimension: int, degree: int) -> Array:
+    """L2 norms of the orthogonal polynomials of the unit simplex."""
     points, weights = simplex_rule(dimension, 2 * degree)
-    sample = np.array([jet[0] for jet in simplex_polynomials(degree, scalar.barycentric(points))])
-    return np.asarray(jets / np.sqrt((sample * sample * weights).sum(axis=1))[:, None])
+    values = np.array([jet[0] for jet in simplex_polynomials(degree, scalar.barycentric(points))])
+    return np.asarray(np.sqrt(values**2 @ weights))
 
 
-def scalar_tensors(dimension: int, order: int, rule: Rule) -> tuple[NDArray[Any], NDArray[Any], NDArray[Any]]:
-    """Mass, stiffness and moments of the raw scalar basis with a given rule."""
-    points, weights = rule
+def raw_orthonormal(dimension: int, degree: int, points: Array, norms: Array) -> Array:
+    """Jets (q, 1 + d, n) of the orthonormal polynomials at points (d, n), given ``scalar_norms``."""
+    jets = np.array(simplex_polynomials(degree, scalar.barycentric(points)))
+    return np.asarray(jets / norms[:, None, None])
+
+
+def orthonormal(dimension: int, degree: int, points: Array) -> Array:
+    """Orthonormal polynomials on the unit simplex at points (d, n): (q, n)."""
+    return raw_orthonormal(dimension, degree, points, scalar_norms(dimension, degree))[:, 0]
+
+
+def scalar_tensors(dimension: int, order: int) -> tuple[Array, Array, Array]:
+    """Mass, stiffness and moments of the raw scalar basis."""
+    points, weights = simplex_rule(dimension, 2 * order)
     jets = np.array(scalar.basis(dimension, order, points))
     values, slopes = jets[:, 0], jets[:, 1:]
     weighted = slopes * weights
@@ -83,9 +91,9 @@ def scalar_tensors(dimension: int, order: int, rule: Rule) -> tuple[NDArray[Any]
     return (values * weights) @ values.T, stiffness, (psi * weights) @ values.T
 
 
-def flux_tensors(dimension: int, order: int, rule: Rule) -> tuple[NDArray[Any], NDArray[Any]]:
-    """Mass and divergence of the raw Raviart-Thomas basis with a given rule."""
-    points, weights = rule
+def flux_tensors(dimension: int, order: int) -> tuple[Array, Array]:
+    """Mass and divergence of the raw Raviart-Thomas basis."""
+    points, weights = simplex_rule(dimension, 2 * order + 2)
     values, divergences = raviart_thomas.basis(dimension, order, points)
     weighted = values * weights
     mass = np.array(
@@ -95,17 +103,17 @@ def flux_tensors(dimension: int, order: int, rule: Rule) -> tuple[NDArray[Any], 
     return mass, (psi * weights) @ divergences.T
 
 
-def congruence(transform: NDArray[Any]) -> Callable[[NDArray[Any]], NDArray[Any]]:
-    """Change of basis for bilinear tensors; new functions are the columns of ``transform``."""
-    return lambda tensor: transform.T @ tensor @ transform
+def change_basis(tensor: Array, transform: Array) -> Array:
+    """A bilinear tensor (..., n, n) in new functions, the columns of ``transform``."""
+    return np.asarray(transform.T @ tensor @ transform)
 
 
-def scalar_transform(mass: Array, stiffness: Array, skeleton: int) -> Array:
+def scalar_transform(stiffness: Array, skeleton: int) -> Array:
     """Makes the bubbles orthonormal in the energy of the reference simplex; continuity is untouched."""
     energy = np.trace(stiffness)
-    transform = np.eye(len(mass))
+    transform = np.eye(len(energy))
     bubbles = slice(skeleton, None)
-    if skeleton < len(mass):
+    if skeleton < len(energy):
         factor = np.linalg.cholesky(energy[bubbles, bubbles])
         transform[bubbles, bubbles] = np.linalg.inv(factor).T
     return transform
@@ -140,16 +148,17 @@ def flux_transform(mass: Array, divergence: Array, facet: int) -> tuple[Array, i
 def scalar_reference(dimension: int, order: int) -> ScalarReference:
     """Tensors of the scalar element of ``order`` >= 1."""
     skeleton = scalar.skeleton_size(dimension, order)
-    mass, stiffness, moments = scalar_tensors(dimension, order, simplex_rule(dimension, 2 * order))
-    change = scalar_transform(mass, stiffness, skeleton)
-    apply = congruence(change)
-    return ScalarReference(order, apply(mass), apply(stiffness), moments @ change, skeleton)
+    mass, stiffness, moments = scalar_tensors(dimension, order)
+    change = scalar_transform(stiffness, skeleton)
+    return ScalarReference(
+        order, change_basis(mass, change), change_basis(stiffness, change), moments @ change, skeleton
+    )
 
 
 @lru_cache(maxsize=64)
 def flux_reference(dimension: int, order: int) -> FluxReference:
     """Tensors of the Raviart-Thomas element whose divergences are the polynomials of ``order`` >= 0."""
-    mass, divergence = flux_tensors(dimension, order, simplex_rule(dimension, 2 * order + 2))
+    mass, divergence = flux_tensors(dimension, order)
     facet = (dimension + 1) * simplex_dimension(dimension - 1, order)
     change, free = flux_transform(mass, divergence, facet)
-    return FluxReference(order, congruence(change)(mass), divergence @ change, facet, free)
+    return FluxReference(order, change_basis(mass, change), divergence @ change, facet, free)

@@ -18,7 +18,7 @@ UNIT = 2.0**-53
 
 @dataclass(frozen=True)
 class Pencil:
-    """A[u] = int G grad u . grad u + p u^2 against B[u] = int b u^2 on functions that vanish on the Dirichlet part.
+    """A[u] = int G grad u . grad u + p u^2 against B[u] = int b u^2 on functions zero on the Dirichlet part.
 
     mesh : the cells.
     diffusion : (nc, d, d) symmetric positive definite G per cell.
@@ -49,22 +49,22 @@ class Pencil:
     def flux_metric(self) -> Array:
         """(nc, d, d) M with int_T G^-1 s . t = sum_ab M_ab int s^a t^b for Piola-mapped fields."""
         spans = self.mesh.spans
-        metric = spans.transpose(0, 2, 1) @ np.linalg.solve(self.diffusion, spans) / self.jacobian[:, None, None]
+        metric = spans.transpose(0, 2, 1) @ np.linalg.solve(self.diffusion, spans)
+        metric /= self.jacobian[:, None, None]
         return np.asarray((metric + metric.transpose(0, 2, 1)) / 2)
 
     @cached_property
-    def coefficient_error(self) -> float:
-        """Bound e with (1-e) A <= A' <= (1+e) A, and for B: A' the true form, A the one these arrays define.
+    def ratio_error(self) -> float:
+        """Bound e: every ratio A/B of the true forms is one of these arrays times a factor within 1 - e and 1 + e.
 
-        If the true Jacobian is (I + F) J then gradients change by (I + F)^-T and volumes by det(I + F): a factor
-        within (1 + |F|)^d / (1 - |F|)^2. Rounding of the 2x2 or 3x3 formulas acts like |F| = c u cond(J).
+        If the true Jacobian is (I + F) J, gradients change by (I + F)^-T and volumes by det(I + F): A by a factor
+        within (1 +- |F|)^d / (1 -+ |F|)^2, B within (1 +- |F|)^d. The rounding of the small matrices formed here
+        perturbs A by at most c d^2 u cond(J)^2.
         """
-        dimension = self.mesh.dimension
-        sizes = np.linalg.norm(self.mesh.spans, axis=(1, 2)) * np.linalg.norm(
-            np.linalg.inv(self.mesh.spans), axis=(1, 2)
-        )
-        shape = self.mesh.shape_error
-        return float(1.1 * (dimension + 2) * shape + 32 * dimension**2 * UNIT * np.max(sizes) ** 2)
+        dimension, spans = self.mesh.dimension, self.mesh.spans
+        condition = np.linalg.norm(spans, axis=(1, 2)) * np.linalg.norm(np.linalg.inv(spans), axis=(1, 2))
+        shape = 1.1 * (2 * dimension + 2) * self.mesh.shape_error
+        return float(shape + 32 * dimension**2 * UNIT * np.max(condition) ** 2)
 
     def shifted(self, shift: float) -> "Pencil":
         """The pencil (A + shift B, B): every ratio grows by ``shift``."""
