@@ -6,6 +6,7 @@ import importlib
 import socket
 import sys
 from collections.abc import Sequence
+from contextlib import suppress
 from pathlib import Path
 
 import uvicorn
@@ -51,12 +52,19 @@ def main(arguments: Sequence[str] | None = None) -> int:
 
 def _serve(host: str, port: int, *, quiet: bool) -> int:
     from service.api.app import create_app
+    from service.jobs import tables
+    from service.settings import Settings
 
     try:
-        app = create_app()
+        settings = Settings()
+        tables.connect(settings.database).dispose()
     except ValidationError as error:
         print(f"A setting cannot be used:\n{error}", file=sys.stderr)
         return 2
+    except (SQLAlchemyError, OSError, ImportError) as error:
+        print(f"The job store cannot be opened, see WELLPOSED_DATABASE: {error}", file=sys.stderr)
+        return 1
+    app = create_app(settings)
     logging = copy.deepcopy(LOGGING_CONFIG)
     logging["loggers"]["wellposed"] = {"handlers": ["default"], "level": "INFO", "propagate": False}
     # Standard output is for the line that says where the service listens.
@@ -81,13 +89,8 @@ def _serve(host: str, port: int, *, quiet: bool) -> int:
 
     shown = f"[{address}]" if listening.family == socket.AF_INET6 else address
     print(f"{LISTENING}http://{shown}:{actual}", flush=True)
-    try:
+    with suppress(KeyboardInterrupt):
         _Server(app, config).run(sockets=[listening])
-    except SQLAlchemyError as error:
-        print(f"The job store cannot be used: {error}", file=sys.stderr)
-        return 1
-    except KeyboardInterrupt:
-        pass
     return 0
 
 

@@ -1,5 +1,6 @@
 """The one table of jobs, and the connection to the database that holds it."""
 
+from pathlib import Path
 from typing import Any
 
 from sqlalchemy import (
@@ -57,11 +58,15 @@ INDEXES = (
 
 
 def connect(url: str) -> Engine:
-    """Open the database and make the table where it is missing.
+    """Open the database, and make the table where it is missing.
 
-    Raises ``sqlalchemy.exc.SQLAlchemyError`` when the URL or the database cannot be used.
+    Raises ``sqlalchemy.exc.SQLAlchemyError`` when the URL or the database cannot be used, OSError when
+    the folder of a SQLite file cannot be made, ImportError when the driver is not installed.
     """
-    if make_url(url).get_backend_name() == "sqlite":
+    stated = make_url(url)
+    if stated.get_backend_name() == "sqlite":
+        if stated.database:
+            Path(stated.database).parent.mkdir(parents=True, exist_ok=True, mode=0o700)
         engine = create_engine(url, connect_args={"timeout": 15.0})
         event.listen(engine, "connect", _prepare_sqlite)
     else:
