@@ -15,6 +15,7 @@ from service.bounds.minorant import ceiling
 from service.bounds.ritz import TrialSpace
 from service.bounds.rounding import down, up
 from service.bounds.separation import MARGIN, Separation, counted_bound, reachable, separate
+from service.errors import ComputationError
 from service.elements.hybrid import MAX_HYBRID_ORDER
 from service.elements.reference import MAX_ORDER
 from service.forms.pencil import Pencil
@@ -90,11 +91,15 @@ def sharpen(
 
 @dataclass(frozen=True)
 class Prospect:
-    """A first look at the spectrum on a mesh: trial functions of low order, and where the spectrum is cut."""
+    """A first look at the spectrum on a mesh: trial functions of low order, and where the spectrum is cut.
+
+    shrink : the factor by which edges must shrink before minorants reach the wanted ratio; None when they do.
+    """
 
     ratios: Array
     functions: Array
     cut: Separation
+    shrink: float | None = None
 
 
 def look(
@@ -104,11 +109,10 @@ def look(
     space: TrialSpace,
     index: int,
     cells: int,
-) -> Prospect | float:
+) -> Prospect:
     """The cut of the spectrum, from more and more eigenvalues until a gap shows.
 
-    Returns the factor by which edges must shrink if minorants do not reach the wanted ratio on an affordable
-    refinement of this mesh.
+    cells : how many cells a mesh may have that is refined only for this.
     """
     ahead = 3
     while True:
@@ -118,7 +122,8 @@ def look(
         goal = 1.1 * float(ritz[min(index, len(ritz) - 1)])
         fine = reachable(pencil, pencil_on, refined, goal, cells)
         if fine is None:
-            return 0.9 * math.sqrt(MARGIN * ceiling(pencil) / goal)
+            shrink = 0.9 * math.sqrt(MARGIN * ceiling(pencil) / goal)
+            return Prospect(ratios, functions, Separation(0, 0.0, 0.0, pencil), shrink)
         cut = separate(fine, ritz, index) if len(ritz) > index else Separation(0, 0.0, 0.0, fine)
         dense = float(ritz[-1]) < 1.05 * float(ritz[index - 1]) and len(fine.mesh.cells) > 1500
         if cut.gap > 0.02 or ahead >= LOOK_AHEAD or len(ritz) < wanted or dense:
@@ -148,23 +153,22 @@ def enclose(
     level = 0
     while True:
         begun = time.monotonic()
-        mesh = mesh_at(size)
+        try:
+            mesh = mesh_at(size)
+        except ComputationError:
+            if known is UNKNOWN:
+                raise
+            return
         pencil = pencil_on(mesh)
-        space = TrialSpace(pencil, FIRST_ORDER)
-        prospect = look(pencil, pencil_on, refined, space, index, max(MINORANT_CELLS, 2 * len(mesh.cells)))
-        if isinstance(prospect, float):
-            size *= min(0.5, prospect)
-            continue
-        cut, ratios, functions = prospect.cut, prospect.ratios, prospect.functions
         order = FIRST_ORDER
+        space = TrialSpace(pencil, order)
+        prospect = look(pencil, pencil_on, refined, space, index, max(MINORANT_CELLS, 2 * len(mesh.cells)))
+        cut, ratios, functions = prospect.cut, prospect.ratios, prospect.functions
         widths: list[float] = []
         while True:
             found = sharpen(pencil, index, cut, order, functions, ratios)
-            if not math.isfinite(found.lower):
-                rank = min(order, MAX_HYBRID_ORDER)
-                counted = counted_bound(cut.pencil, found.upper, index, rank, budget.width)
-                by = f"nonconforming minorant of order {rank}, inertia count"
-                found = found.intersect(Enclosure(counted, math.inf, lower_by=by))
+            if prospect.shrink is None and not math.isfinite(found.lower):
+                found = found.intersect(count_below(cut.pencil, found.upper, index, order, budget.width))
             known = known.intersect(found)
             widths.append(found.width)
             cost = time.monotonic() - begun
@@ -172,7 +176,7 @@ def enclose(
             yield Step(known, mesh, level, order, unknowns, cost)
             if known.width <= budget.width:
                 return
-            following = next_order(order, widths, budget.width)
+            following = None if prospect.shrink is not None else next_order(order, widths, budget.width)
             if following is None:
                 break
             growth = (following / order) ** 3
@@ -182,12 +186,22 @@ def enclose(
             used = max(cut.count, index)
             space = TrialSpace(pencil, following)
             start = space.extend(functions[:, :, : used + 2], order)
-            ratios, functions = space.smallest(float(ratios[index - 1]), used, 1e-2 * budget.width, start)
+            tolerance = 1e-2 * budget.width
+            ratios, functions = space.smallest(float(ratios[index - 1]), used, tolerance, start)
             order = following
         level += 1
-        size /= 2
-        if not budget.affords(3 * cost, 3 * unknowns):
+        shrink = 0.5 if prospect.shrink is None else min(0.5, prospect.shrink)
+        size *= shrink
+        if not budget.affords(cost, int(unknowns / shrink)):
             return
+
+
+def count_below(pencil: Pencil, estimate: float, index: int, order: int, width: float) -> Enclosure:
+    """What counting alone proves, where no gap in the spectrum lets the sharp bounds work."""
+    rank = min(order, MAX_HYBRID_ORDER)
+    bound = counted_bound(pencil, estimate, index, rank, width)
+    by = f"nonconforming minorant of order {rank}, inertia count"
+    return Enclosure(bound, math.inf, lower_by=by)
 
 
 def next_order(order: int, widths: list[float], target: float) -> int | None:

@@ -1,0 +1,54 @@
+"""Descriptions of what processes return, in the closed schema dialect of OGC API - Processes 1.0."""
+
+from typing import Any
+
+JSON = dict[str, Any]
+
+NUMBER_OR_NONE: JSON = {"type": "number", "nullable": True}
+
+CONSTANT: JSON = {
+    "type": "object",
+    "properties": {
+        "exists": {"type": "boolean", "description": "False when the problem has no such constant."},
+        "lower": {"type": "number", "description": "Proved lower bound of the constant."},
+        "upper": {**NUMBER_OR_NONE, "description": "Proved upper bound; null while none is known."},
+        "best": {"type": "number", "description": "The value that is nearest, by experience."},
+        "relative_width": {**NUMBER_OR_NONE, "description": "(upper - lower) / upper."},
+        "target_met": {"type": "boolean"},
+        "rigour": {"type": "string", "enum": ["guaranteed", "estimated"]},
+        "rounding": {"type": "string", "enum": ["included", "not included"]},
+        "unit": {"type": "string"},
+        "statement": {"type": "string", "description": "The inequality that is proved; C is the constant."},
+        "lower_by": {"type": "string"},
+        "upper_by": {"type": "string"},
+    },
+    "required": ["statement"],
+}
+
+RESULT: JSON = {
+    "type": "object",
+    "required": ["target_met", "constants"],
+    "properties": {
+        "target_met": {"type": "boolean", "description": "Whether every constant is as narrow as asked."},
+        "constants": {"type": "object", "additionalProperties": CONSTANT},
+        "mesh": {
+            "type": "object",
+            "properties": {
+                "triangles": {"type": "integer"},
+                "largest_edge": {"type": "number"},
+                "smallest_edge": {"type": "number"},
+            },
+        },
+        "history": {"type": "array", "items": {"type": "object"}},
+        "warnings": {"type": "array", "items": {"type": "string"}},
+        "provenance": {"type": "object"},
+    },
+}
+
+CONSTANTS_OUTPUT: dict[str, JSON] = {
+    "result": {
+        "title": "Enclosures",
+        "description": "Every constant with its proved bounds, and how they were obtained.",
+        "schema": RESULT,
+    }
+}
