@@ -77,7 +77,7 @@ def mesh_domain(domain: PlaneDomain, *, size: float, target: float, max_cells: i
     layers = np.concatenate([layers, np.zeros(len(every) - len(layers), dtype=np.int64)])
     _check_count(len(triangles) + 2 * int(layers[triangles].sum()), max_cells)
 
-    spans, error = base_spans(every, triangles, _displacements(cut, points, edges, len(every)))
+    spans, error = base_spans(every, triangles, displacements(cut, points, edges, len(every)))
     base = Triangulation(every, triangles, spans, error, cut.edges, domain.part[cut.parent])
     _check_cover(base, points, edges, domain.loops)
     return as_mesh(grade(base, layers), frame)
@@ -104,7 +104,7 @@ def _longest_at(points: NDArray[np.float64], triangles: NDArray[np.int64]) -> ND
     return longest
 
 
-def _displacements(
+def displacements(
     cut: Subdivision, points: NDArray[np.float64], edges: NDArray[np.int64], count: int
 ) -> NDArray[np.float64]:
     """Bound of the distance of each base vertex to its true place, for each coordinate, (nv, 2).

@@ -6,10 +6,12 @@ import numpy as np
 import pytest
 from meshing_shapes import SHAPES, check_mesh, domain, shoreline, turned
 
-from service.meshing.generate import mesh_domain
+from service.meshing.generate import displacements, mesh_domain
 from service.meshing.grade import grade
 from service.meshing.mesh import Mesh
+from service.meshing.normalise import normalise
 from service.meshing.refine import refine
+from service.meshing.sizing import size_function, subdivide
 from service.meshing.triangulation import Triangulation, base_spans
 
 
@@ -139,6 +141,41 @@ def test_inner_points_of_edges_are_within_their_allowance():
     assert on_edge.sum() > 5
     assert distance[on_edge].max() > 0
     assert distance[on_edge].max() <= 5 * 2.0**-53 * np.hypot(*np.maximum(true[0], true[1]).astype(float))
+
+
+@pytest.mark.parametrize("flat", [1.0, 1e-4, 1e-7])
+def test_the_bound_holds_for_every_triangle_by_itself(flat):
+    """Single triangles with the worst displacements allowed: none beats its own bound, some come near."""
+    generator = np.random.default_rng(11)
+    cells, size = np.array([[0, 1, 2]]), 2.0**-50
+    ratios = []
+    for moved in [0.0] * 40 + [1.0] * 40:
+        corners = generator.uniform(size=(3, 2)) * [1, flat]
+        if np.linalg.det(corners[1:] - corners[0]) < 0:
+            corners = corners[::-1].copy()
+        signs = generator.choice([-1.0, 1.0], size=(3, 2))
+        allowed = np.full((3, 2), moved * size)
+        spans, bound = base_spans(corners, cells, allowed)
+        exact = rational(corners) + rational(signs * allowed)
+        error = ((exact[1:] - exact[0]).T - rational(spans[0])).astype(np.float64)
+        ratios.append(np.linalg.norm(error @ np.linalg.inv(spans[0]), 2) / bound)
+    assert max(ratios) <= 1
+    assert max(ratios[:40]) > 0.1
+    assert max(ratios[40:]) > 0.3
+
+
+def test_corners_are_off_by_no_more_than_their_displacement():
+    shape = domain(turned([(0.1, 0.1), (1.7, 0.4), (0.9, 1.3)], 17) + 1 / 3)
+    frame = normalise(shape.points)
+    sizes = size_function(frame.points, np.full(3, 0.3), 0.3)
+    cut = subdivide(frame.points, shape.edges, sizes, np.full(3, 2))
+    allowed = displacements(cut, frame.points, shape.edges, len(cut.points) + 1)
+    assert (allowed[-1] == 0).all()
+    true = (rational(shape.points) - rational(frame.origin)) / Fraction(frame.unit)
+    error = np.abs(true - rational(frame.points)).astype(np.float64)
+    assert error.max() > 0
+    assert (error <= allowed[:3]).all()
+    assert (allowed < 2e-15).all()
 
 
 def test_spans_next_to_the_grid_are_multiples_of_it():

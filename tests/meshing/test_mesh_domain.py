@@ -4,7 +4,17 @@ import numpy as np
 import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
-from meshing_shapes import SHAPES, check_mesh, comb, domain, notched, perimeters, shoreline
+from meshing_shapes import (
+    SHAPES,
+    SQUARE,
+    check_mesh,
+    comb,
+    domain,
+    notched,
+    perimeters,
+    shoreline,
+    square_hole,
+)
 from skfem import MeshTri
 
 from service.meshing.generate import mesh_domain
@@ -134,6 +144,18 @@ def test_corner_layers_go_far_below_the_digits_of_coordinates():
     assert longest_edges(mesh)[at_corner].max() < 1e-14
     assert flatness(mesh)[at_corner].max() < 10
     check_mesh(mesh, shape)
+
+
+def test_small_dirichlet_parts_are_graded_as_deep_as_large_ones():
+    """Relative to the hole the smallest cell is alike; a hole without condition matters less and less."""
+    depth = {}
+    for conditions in ("dddddddd", "ddddnnnn"):
+        for side in (0.1, 1e-4):
+            shape = domain(SQUARE, square_hole(0.7, 0.6, side), conditions=conditions)
+            mesh = mesh_domain(shape, size=0.3, target=1e-6)
+            depth[conditions, side] = longest_edges(mesh).min() * mesh.unit / side
+    assert depth["dddddddd", 0.1] / 20 < depth["dddddddd", 1e-4] < 20 * depth["dddddddd", 0.1]
+    assert depth["ddddnnnn", 1e-4] > 100 * depth["dddddddd", 1e-4]
 
 
 def test_no_triangle_has_two_graded_corners():
