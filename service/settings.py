@@ -56,7 +56,7 @@ class Settings(BaseSettings):
         description="Resident memory one job may use, bytes; default: 80 % of the machine over the workers.",
     )
     wall_seconds: float = Field(
-        default=3600.0, gt=0, description="Wall-clock time no job may exceed, seconds, whatever it asks for."
+        default=3660.0, gt=0, description="Wall-clock time no job may exceed, seconds, whatever it asks for."
     )
     grace_seconds: float = Field(
         default=5.0, ge=0, description="Seconds a job gets beyond its own limit before it is killed."

@@ -18,7 +18,7 @@ LISTENING = "Wellposed listens at "
 """What ``serve`` says first on its standard output; the address follows."""
 
 _START = 60.0
-_POLL = 0.2
+_POLL = 0.05
 
 
 def main() -> int:
@@ -49,7 +49,7 @@ def _tell(client: httpx.Client, request: JSON) -> int:
         print(f"The job ended as {status['status']}: {status['message']}", file=sys.stderr)
         return 1
     result = client.get(f"/jobs/{status['jobID']}/results").raise_for_status().json()
-    print("\nProved for every function on this basin, lengths in metres:\n")
+    print(f"\nProved on this domain, lengths in {problem['length_unit']}:\n")
     print("\n\n".join(words.enclosures(result)))
     for warning in result.get("warnings", []):
         print(f"\nNote: {warning}")
