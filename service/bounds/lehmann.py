@@ -113,4 +113,7 @@ def goerisch_gram(trial: TrialSpace, flux: FluxSpace, functions: Array, ratios: 
     wrong = scale[:, None] * count * error**2
     balance = np.sqrt((np.max(wrong, axis=1) + 1e-300) / (np.max(present, axis=1) + 1e-300))[:, None]
     size = second.size + 1.01 * np.sum(balance * present + wrong / balance + wrong, axis=0)
-    return flux.energy_gram(fields) + Gram(second.matrix, size)
+    # The forms are those of the computed gradient metric; the flux metric is its inverse up to metric_error.
+    energy = flux.energy_gram(fields)
+    inverse = 1 + 4 * pencil.metric_error
+    return Gram(inverse * energy.matrix, inverse * energy.size) + Gram(second.matrix, size)

@@ -54,17 +54,25 @@ class Pencil:
         return np.asarray((metric + metric.transpose(0, 2, 1)) / 2)
 
     @cached_property
+    def metric_error(self) -> float:
+        """Bound e with (1-e) M <= M' <= (1+e) M for the metrics: M' exact for ``spans`` as given, M as computed.
+
+        Entries of the d x d products and inverses have errors of at most c d u times the products of norms,
+        against smallest eigenvalues that are cond(J)^2 below the largest.
+        """
+        spans = self.mesh.spans
+        condition = np.linalg.norm(spans, axis=(1, 2)) * np.linalg.norm(np.linalg.inv(spans), axis=(1, 2))
+        return float(32 * self.mesh.dimension**2 * UNIT * np.max(condition) ** 2)
+
+    @cached_property
     def ratio_error(self) -> float:
         """Bound e: every ratio A/B of the true forms is one of these arrays times a factor within 1 - e and 1 + e.
 
         If the true Jacobian is (I + F) J, gradients change by (I + F)^-T and volumes by det(I + F): A by a factor
-        within (1 +- |F|)^d / (1 -+ |F|)^2, B within (1 +- |F|)^d. The rounding of the small matrices formed here
-        perturbs A by at most c d^2 u cond(J)^2.
+        within (1 +- |F|)^d / (1 -+ |F|)^2, B within (1 +- |F|)^d; then the rounding of the metrics.
         """
-        dimension, spans = self.mesh.dimension, self.mesh.spans
-        condition = np.linalg.norm(spans, axis=(1, 2)) * np.linalg.norm(np.linalg.inv(spans), axis=(1, 2))
-        shape = 1.1 * (2 * dimension + 2) * self.mesh.shape_error
-        return float(shape + 32 * dimension**2 * UNIT * np.max(condition) ** 2)
+        dimension = self.mesh.dimension
+        return 1.1 * (2 * dimension + 2) * self.mesh.shape_error + 2 * self.metric_error
 
     def shifted(self, shift: float) -> "Pencil":
         """The pencil (A + shift B, B): every ratio grows by ``shift``."""
