@@ -9,6 +9,7 @@ from starlette.middleware.cors import CORSMiddleware
 from service import __version__
 from service.api import definition, execution, health, jobs, landing, problems, processes
 from service.api.edge import Edge
+from service.api.order import Orders
 from service.api.services import Services
 from service.jobs import registry, tables
 from service.jobs.bells import Bells
@@ -46,7 +47,7 @@ def create_app(settings: Settings | None = None) -> FastAPI:
             _terms(chosen),
         )
         reception = Reception(store, supervisors, bells)
-        app.state.services = Services(chosen, known, store, reception)
+        app.state.services = Services(chosen, known, store, reception, Orders())
         supervisors.start()
         try:
             yield

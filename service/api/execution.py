@@ -5,7 +5,7 @@ from starlette.concurrency import run_in_threadpool
 from starlette.requests import Request
 from starlette.responses import Response
 
-from service.api import links, media, order, preferences, reader, results, services, status
+from service.api import links, media, preferences, reader, results, services, status
 from service.api.operation import answer, operation, parameter, ref
 from service.api.preferences import Preferences
 from service.api.problems import HTTPProblemError
@@ -89,7 +89,7 @@ async def execute(request: Request) -> Response:
 
 
 def _admit(known: Services, process: Process, body: bytes) -> Job:
-    request = order.read(process, body)
+    request = known.orders.read(process, body)
     if known.reception.closing:
         raise _going_down()
     return known.reception.submit(request)

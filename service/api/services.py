@@ -6,6 +6,7 @@ from typing import cast
 
 from starlette.requests import Request
 
+from service.api.order import Orders
 from service.jobs.reception import Reception
 from service.jobs.store import Store
 from service.processes.base import Process
@@ -14,12 +15,13 @@ from service.settings import Settings
 
 @dataclass(frozen=True)
 class Services:
-    """Settings, processes by id, and the jobs."""
+    """Settings, processes by id, the jobs, and what reads requests for them."""
 
     settings: Settings
     processes: Mapping[str, Process]
     store: Store
     reception: Reception
+    orders: Orders
 
 
 def of(request: Request) -> Services:

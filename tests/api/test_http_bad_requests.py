@@ -7,7 +7,7 @@ from typing import Any
 
 import httpx
 import pytest
-from conftest import BODY_BYTES
+from running import BODY_BYTES
 
 URL = "/processes/echo/execution"
 JSON = {"Content-Type": "application/json"}

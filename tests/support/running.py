@@ -15,6 +15,8 @@ import psutil
 from jsonschema import Draft202012Validator
 
 STUBS = "stub_processes:PROCESSES"
+SYNC_SECONDS = 1.0
+BODY_BYTES = 20_000
 _SUPPORT = Path(__file__).parent
 _ROOT = _SUPPORT.parents[1]
 _LISTENING = "Wellposed listens at "
@@ -43,7 +45,7 @@ class Service:
         line = self.process.stdout.readline()
         assert line.startswith(_LISTENING), self.log.read_text()
         self.base = line.removeprefix(_LISTENING).strip()
-        self.client = httpx.Client(base_url=self.base, timeout=30.0, trust_env=False)
+        self.client = httpx.Client(base_url=self.base, timeout=30.0, trust_env=False, verify=False)
         wait_for(lambda: self.client.get("/readyz").status_code == 200)
 
     def family(self) -> list[psutil.Process]:
@@ -99,10 +101,12 @@ class Definition:
         self.seen.add((method, template, status))
         if request.method != "HEAD" and "json" in media_type:
             response.read()
-            schema = {**content[media_type]["schema"], "components": self.document["components"]}
-            Draft202012Validator(schema, format_checker=Draft202012Validator.FORMAT_CHECKER).validate(
-                response.json()
-            )
+            self._validator(method, template, status, media_type).validate(response.json())
+
+    def _validator(self, method: str, template: str, status: str, media_type: str) -> Draft202012Validator:
+        content = self.document["paths"][template][method]["responses"][status]["content"]
+        schema = {**content[media_type]["schema"], "components": self.document["components"]}
+        return Draft202012Validator(schema, format_checker=Draft202012Validator.FORMAT_CHECKER)
 
 
 def wait_for(condition: Callable[[], Any], seconds: float = 20.0) -> Any:
