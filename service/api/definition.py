@@ -9,7 +9,7 @@ from service.api.docs import page
 from service.api.landing import DEFINITION_TYPE
 from service.api.openapi30 import downgrade
 from service.api.operation import answer, operation
-from service.demo.examples import examples
+from service.demo.examples import DEMO, examples, texts
 from service.processes.base import JSON
 
 router = APIRouter()
@@ -47,7 +47,8 @@ def documentation(request: Request) -> Response:
     This page; nothing on it comes from elsewhere.
     """
     headers = {"Content-Security-Policy": "default-src 'none'; style-src 'unsafe-inline'"}
-    return HTMLResponse(page(_document(request), services.of(request).processes), headers=headers)
+    known = services.of(request).processes
+    return HTMLResponse(page(_document(request), known, texts()[DEMO]), headers=headers)
 
 
 def _document(request: Request) -> JSON:

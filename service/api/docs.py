@@ -9,13 +9,16 @@ from string import Template
 from service.processes.base import JSON, Process
 
 
-def page(document: JSON, processes: Mapping[str, Process]) -> str:
-    """HTML made of an API definition (3.1) and the processes; it refers to nothing outside itself."""
+def page(document: JSON, processes: Mapping[str, Process], example: str) -> str:
+    """HTML made of an API definition (3.1), the processes and the text of an example request.
+
+    It refers to nothing outside the service.
+    """
     template = Template(resources.files("service.api").joinpath("static/docs.html").read_text("utf-8"))
     return template.substitute(
         version=escape(document["info"]["version"]),
         base=escape(document["servers"][0]["url"]),
-        example=escape(_first_example(document)),
+        example=escape(example),
         processes="\n".join(_process(process) for process in processes.values()),
         operations="\n".join(
             _operation(path, method, described)
@@ -23,12 +26,6 @@ def page(document: JSON, processes: Mapping[str, Process]) -> str:
             for method, described in methods.items()
         ),
     )
-
-
-def _first_example(document: JSON) -> str:
-    body = document["paths"]["/processes/{processID}/execution"]["post"]["requestBody"]
-    shown = body["content"]["application/json"].get("examples", {})
-    return next((_json(example["value"]) for example in shown.values()), "{}")
 
 
 def _process(process: Process) -> str:

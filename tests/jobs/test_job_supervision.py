@@ -3,6 +3,7 @@
 import os
 import resource
 import signal
+import sqlite3
 import threading
 import time
 from collections.abc import Iterator
@@ -96,6 +97,29 @@ def test_the_fork_server_is_replaced_when_it_dies(service: Service) -> None:
     server = next(each for each in service.family() if "forkserver" in " ".join(each.cmdline()[:4]))
     server.kill()
     wait_for(lambda: not alive(server.pid))
+    next_job_runs(service.client)
+
+
+def test_a_store_that_is_away_for_a_while(service: Service) -> None:
+    def rename(old: str, new: str) -> None:
+        with sqlite3.connect(service.state / "jobs-1.sqlite3", timeout=10.0) as connection:
+            connection.execute(f"ALTER TABLE {old} RENAME TO {new}")
+        connection.close()
+
+    rename("jobs", "elsewhere")
+    try:
+        for response in (
+            service.client.get("/jobs/any"),
+            service.client.post("/processes/echo/execution", json={"inputs": {"problem": {"title": "away"}}}),
+        ):
+            assert response.status_code == 503
+            assert response.json()["type"] == OURS + "store-unavailable"
+            assert int(response.headers["retry-after"]) > 0
+            assert "elsewhere" not in response.text
+            assert "SELECT" not in response.text
+        time.sleep(1.5)  # long enough for supervisors and housekeeper to stumble over it
+    finally:
+        rename("elsewhere", "jobs")
     next_job_runs(service.client)
 
 
