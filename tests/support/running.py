@@ -41,6 +41,13 @@ class Service:
             stderr=self._stderr,
             text=True,
         )
+        try:
+            self._come_up()
+        except BaseException:
+            self.process.kill()
+            raise
+
+    def _come_up(self) -> None:
         assert self.process.stdout is not None
         line = self.process.stdout.readline()
         assert line.startswith(_LISTENING), self.log.read_text()
