@@ -105,14 +105,12 @@ def _read(inputs: object, known: Collection[str], caps: Limits) -> tuple[Request
     if members is None:
         raise ProblemError(*place.faults)
     problem = members.read("problem", _read_problem)
-    constants = members.read("constants", lambda value, place: _read_constants(value, place, known))
+    constants = members.read("constants", partial(_read_constants, known=known))
     tolerance = members.get("tolerance", _read_tolerance, DEFAULT_TOLERANCE)
-    limits = members.get(
-        "limits", lambda value, place: _read_limits(value, place, caps), default_limits(caps)
-    )
+    limits = members.get("limits", partial(_read_limits, caps=caps), default_limits(caps))
     outline = outline_of(problem.shape) if problem is not None and problem.shape is not None else None
     laid = None
-    if problem is not None and problem.boundary is not None and outline is not None:
+    if problem is not None and problem.boundary is not None and outline is not None and _domain_sound(place):
         laid = lay_out(outline, problem.boundary, problem.length_unit)
     if place.faults or problem is None or problem.shape is None or problem.boundary is None or laid is None:
         raise ProblemError(*place.faults)
@@ -128,6 +126,11 @@ def _read(inputs: object, known: Collection[str], caps: Limits) -> tuple[Request
         warnings=warnings,
     )
     return request, _document(request, problem.shape, problem.boundary)
+
+
+def _domain_sound(place: Place) -> bool:
+    """Whether the domain is what the client meant; if not, selectors may fail through no fault of theirs."""
+    return not any(fault.pointer.startswith("/problem/domain") for fault in place.faults)
 
 
 def _document(request: Request, shape: Shape, boundary: tuple[PartText, ...]) -> dict[str, Any]:

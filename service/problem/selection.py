@@ -110,7 +110,8 @@ def spans_on_polyline(edges: Edges, points: Points, near: Nearby) -> Spans:
         np.where(swap, q, p),
         np.where(swap, p, q),
     )
-    direction = (q - p) / norms(q - p)[:, None]
+    # Points that differ in the last bits before the smallest number may coincide after scaling.
+    direction = (q - p) / np.maximum(norms(q - p), np.finfo(float).tiny)[:, None]
 
     def beside(distance: NDArray[np.float64]) -> NDArray[np.float64]:
         """How far the points of the edges at a distance from their starts lie from the segment's line."""

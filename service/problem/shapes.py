@@ -10,7 +10,6 @@ from service.problem.positions import (
     MOST_POINTS,
     MOST_RINGS,
     Points,
-    read_coordinate,
     read_point,
     read_points,
 )
@@ -38,9 +37,10 @@ def read_rectangle(value: object, place: Place) -> Shape | None:
     if corner is None or size is None:
         return None
     opposite = (corner[0] + size[0], corner[1] + size[1])
-    reach = [read_coordinate(opposite[axis], place.at("size").at(axis)) for axis in (0, 1)]
-    if None in reach:
-        return None
+    for axis in (0, 1):
+        if abs(opposite[axis]) > LARGEST_COORDINATE:
+            place.at("size").at(axis).refuse(f"The opposite corner lies beyond {LARGEST_COORDINATE:g}.")
+            return None
     (x0, y0), (x1, y1) = corner, opposite
     points = np.array([[x0, y0], [x1, y0], [x1, y1], [x0, y1]])
     return Shape((Piece(Ring(points, place.at("size"), indexed=False), ()),), place)
@@ -53,9 +53,7 @@ def read_polygon(value: object, place: Place) -> Shape | None:
         return None
     outer = members.read("outer", _read_ring)
     holes = members.read("holes", _read_rings) or ()
-    if outer is None:
-        return None
-    return Shape((Piece(outer, holes),), place)
+    return None if outer is None else Shape((Piece(outer, holes),), place)
 
 
 SHAPES: dict[str, Reader[Shape]] = {"rectangle": read_rectangle, "polygon": read_polygon}
