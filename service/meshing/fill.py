@@ -2,6 +2,7 @@
 
 from collections.abc import Iterator
 from contextlib import contextmanager
+from dataclasses import replace
 
 import gmsh
 import numpy as np
@@ -13,6 +14,7 @@ from service.meshing.sizing import SizeFunction
 _FRONTAL = 6
 _LINE = 1
 _SURFACE = 1
+_ROTATION = np.array([[np.cos(1.0), np.sin(1.0)], [-np.sin(1.0), np.cos(1.0)]])
 _OPTIONS = {
     "General.Terminal": 0,
     "General.NumThreads": 1,
@@ -38,6 +40,7 @@ def fill(
     edges: NDArray[np.int64],
     loops: NDArray[np.int64],
     sizes: SizeFunction,
+    turned: bool = False,
 ) -> tuple[NDArray[np.float64], NDArray[np.int64]]:
     """Triangulate the region to the left of the boundary pieces, none of which is cut.
 
@@ -47,6 +50,8 @@ def fill(
     edges : (m, 2) the pieces; those of one loop follow one another.
     loops : (m,) loop of each piece; one outer loop, the others holes.
     sizes : element size inside.
+    turned : show gmsh the domain turned by some angle. Thousands of pieces on each of two lines parallel
+        to an axis take it minutes otherwise.
 
     Returns
     -------
@@ -57,15 +62,16 @@ def fill(
     ComputationError
         ``meshing-failed`` when gmsh gives up or changes the boundary.
     """
+    rotation = _ROTATION if turned else np.eye(2)
     try:
         with _session():
-            _describe(points, edges, loops, sizes)
+            _describe(points @ rotation, edges, loops, replace(sizes, points=sizes.points @ rotation))
             gmsh.model.mesh.generate(2)
             tags, flat, _ = gmsh.model.mesh.getNodes(2, _SURFACE)
             _, corners = gmsh.model.mesh.getElementsByType(2, _SURFACE)
     except Exception as error:
         raise meshing_failed(f"The mesh generator stopped: {error}.") from error
-    inner = np.asarray(flat, dtype=np.float64).reshape(-1, 3)[:, :2]
+    inner = np.asarray(flat, dtype=np.float64).reshape(-1, 3)[:, :2] @ rotation.T
     # The given points have the tags 1 … k.
     number = np.full(max([len(points), *tags]) + 1, -1, dtype=np.int64)
     number[1 : len(points) + 1] = np.arange(len(points))
@@ -109,14 +115,15 @@ def _describe(
     gmsh.option.setNumber("Mesh.MeshSizeMax", sizes.size)
     gmsh.model.geo.synchronize()
     if len(sizes.values):
-        _set_field(flat, sizes, len(curves))
+        _set_field(sizes, len(curves))
 
 
-def _set_field(flat: NDArray[np.float64], sizes: SizeFunction, taken: int) -> None:
+def _set_field(sizes: SizeFunction, taken: int) -> None:
     """The size function as a background field: for each group linear growth with the distance.
 
     Points with tags above ``taken`` are added for the vertices that ask for small elements.
     """
+    flat = np.column_stack([sizes.points, np.zeros(len(sizes.points))])
     field = gmsh.model.mesh.field
     grown = []
     for value, members in zip(sizes.values.tolist(), sizes.members, strict=True):

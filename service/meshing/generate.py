@@ -1,9 +1,12 @@
 """From a plane domain to a graded mesh: the one entry to meshing."""
 
+from dataclasses import dataclass
+
 import numpy as np
 from numpy.typing import NDArray
 
 from service.errors import ComputationError
+from service.meshing.channels import channel_sizes
 from service.meshing.corners import interior_angles, layer_counts, singular_exponents
 from service.meshing.fill import fill, meshing_failed
 from service.meshing.grade import grade
@@ -11,7 +14,7 @@ from service.meshing.mesh import Mesh
 from service.meshing.normalise import normalise
 from service.meshing.scales import local_scales
 from service.meshing.separate import separate
-from service.meshing.sizing import Subdivision, size_function, subdivide, vertex_sizes
+from service.meshing.sizing import SizeFunction, Subdivision, size_function, subdivide, vertex_sizes
 from service.meshing.triangulation import UNIT_ROUNDOFF, Triangulation, as_mesh, base_spans
 from service.problem.domain import PlaneDomain
 
@@ -31,7 +34,8 @@ def mesh_domain(domain: PlaneDomain, *, size: float, target: float, max_cells: i
     ----------
     domain : a connected domain whose loops are simple, disjoint and oriented as documented there.
     size : largest edge length, in mesh units (the diameter of the domain is in [1, 2)). Edges on the
-        boundary keep to it, inner ones nearly so.
+        boundary keep to it, inner ones nearly so. Along narrow channels edges are shorter (see
+        ``channels``) unless ``max_cells`` does not allow it.
     target : relative accuracy wanted in the eigenvalue; decides how deep the grading goes.
     max_cells : largest number of triangles allowed.
 
@@ -63,24 +67,61 @@ def mesh_domain(domain: PlaneDomain, *, size: float, target: float, max_cells: i
         raise meshing_failed("The outline touches itself, or very nearly so.")
     scales = local_scales(points, edges, dirichlet)
     candidates = layer_counts(exponents, _REACH * wanted / scales, target) > 0
-    sizes = size_function(points, wanted, size)
     least = np.where(candidates[edges].all(axis=1), 2, 1).astype(np.int64)
-    cut = subdivide(points, edges, sizes, least)
+    outline = _Outline(points, edges, domain.loops, domain.part, wanted, scales, exponents, least)
+    narrow, narrow_sizes = channel_sizes(points, edges, wanted, size, max_cells // 4)
+    sizes = size_function(np.vstack([points, narrow]), np.concatenate([wanted, narrow_sizes]), size)
+    try:
+        return as_mesh(_triangulate(outline, sizes, target, max_cells, turned=len(narrow) > 0), frame)
+    except ComputationError as error:
+        if error.kind != "mesh-too-large" or not len(narrow):
+            raise
+    # Flatter triangles rather than none.
+    return as_mesh(_triangulate(outline, size_function(points, wanted, size), target, max_cells), frame)
+
+
+@dataclass(frozen=True)
+class _Outline:
+    """The boundary in mesh units, and what its vertices ask for.
+
+    points, edges, loops, part : as in ``PlaneDomain``.
+    wanted : (n,) size at each vertex.
+    scales : (n,) distance over which the solution changes there.
+    exponents : (n,) smallest singular exponent.
+    least : (m,) least number of pieces of each edge.
+    """
+
+    points: NDArray[np.float64]
+    edges: NDArray[np.int64]
+    loops: NDArray[np.int64]
+    part: NDArray[np.int64]
+    wanted: NDArray[np.float64]
+    scales: NDArray[np.float64]
+    exponents: NDArray[np.float64]
+    least: NDArray[np.int64]
+
+
+def _triangulate(
+    outline: _Outline, sizes: SizeFunction, target: float, max_cells: int, turned: bool = False
+) -> Triangulation:
+    """Cut the boundary, fill it, and grade the corners."""
+    points, edges, size = outline.points, outline.edges, sizes.size
+    cut = subdivide(points, edges, sizes, outline.least)
     # k boundary edges need k − 2 triangles at least; triangles of edges up to 1.5 size cover size² each.
     _check_count(max(len(cut.edges) - 2, int(_area(points, edges) / size**2)), max_cells)
 
-    every, triangles = fill(cut.points, cut.edges, domain.loops[cut.parent], sizes)
-    reach = np.minimum(_longest_at(every, triangles)[: len(points)], _REACH * wanted)
+    every, triangles = fill(cut.points, cut.edges, outline.loops[cut.parent], sizes, turned)
+    reach = np.minimum(_longest_at(every, triangles)[: len(points)], _REACH * outline.wanted)
     layers = np.zeros(len(every), dtype=np.int64)
-    layers[: len(points)] = layer_counts(exponents, reach / scales, target)
+    layers[: len(points)] = layer_counts(outline.exponents, reach / outline.scales, target)
     every, triangles = separate(every, triangles, layers > 0)
     layers = np.concatenate([layers, np.zeros(len(every) - len(layers), dtype=np.int64)])
     _check_count(len(triangles) + 2 * int(layers[triangles].sum()), max_cells)
 
     spans, error = base_spans(every, triangles, displacements(cut, points, edges, len(every)))
-    base = Triangulation(every, triangles, spans, error, cut.edges, domain.part[cut.parent])
-    _check_cover(base, points, edges, domain.loops)
-    return as_mesh(grade(base, layers), frame)
+    base = Triangulation(every, triangles, spans, error, cut.edges, outline.part[cut.parent])
+    _check_cover(base, points, edges, outline.loops)
+    return grade(base, layers)
 
 
 def _check_count(cells: int, max_cells: int) -> None:
