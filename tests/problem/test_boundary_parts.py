@@ -4,6 +4,8 @@ import math
 
 import numpy as np
 import pytest
+from hypothesis import given
+from hypothesis import strategies as st
 from problem_documents import SQUARE, faults, inputs, lengths, multi, part, pointers, polygon, read
 
 WIDE = polygon([[0, 0], [2, 0], [2, 1], [0, 1]])
@@ -79,9 +81,10 @@ def test_an_end_near_a_vertex_is_the_vertex():
 
 
 def test_the_tolerance_does_not_confuse_the_sides_of_a_thin_domain():
-    thin = polygon([[0, 0], [1, 0], [1, 2e-9], [0, 2e-9]])
-    domain = read(thin, [part("low", {"segment": [[0, 0], [1, 0]]})]).domain
-    assert lengths(domain)["low"] == 1
+    """Its width, 1.5e-9, is less than 1e-9 of its diameter, 2."""
+    thin = polygon([[-1, 0], [1, 0], [1, 1.5e-9], [-1, 1.5e-9]])
+    domain = read(thin, [part("low", {"segment": [[-1, 0], [1, 0]]})]).domain
+    assert lengths(domain)["low"] == 2
 
 
 def test_ends_of_neighbours_that_differ_by_rounding_are_one_vertex():
@@ -97,6 +100,14 @@ def test_split_vertices_are_the_ends_that_were_given():
     third = 1 / 3
     domain = read(WIDE, [part("it", {"segment": [[third, 0], [2 * third, 0]]})]).domain
     assert domain.points[1:3].tolist() == [[third, 0], [2 * third, 0]]
+
+
+@given(st.floats(0.6, 1.9), st.floats(0.3, 0.7), st.floats(2, 3))
+def test_a_box_splits_edges_along_the_axes_exactly_at_its_border(x, y, right):
+    shape = polygon([[0.1, 0.2], [right, 0.2], [right, 0.8], [0.1, 0.8]])
+    points = read(shape, [part("it", {"box": [[0, 0], [x, y]]})]).domain.points.tolist()
+    assert [x, 0.2] in points
+    assert [0.1, y] in points
 
 
 def test_ends_on_a_slanted_edge_are_moved_onto_it():

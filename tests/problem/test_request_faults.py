@@ -214,6 +214,7 @@ def square(x, y, side):
 
 PLACES = [
     (polygon([[0, 0], [1, 1], [1, 0], [0, 1]]), [f"{OUTER}/2"], "(0.5, 0.5)"),  # crosses itself
+    (polygon([[0, 0], [1, 1], [1, 0], [0, 0.5]]), [f"{OUTER}/2"], "(0.333333333333, 0.333333333333)"),
     (polygon([[0, 0], [0, 0], [1, 0], [1, 1]]), [f"{OUTER}/1"], "(0, 0)"),  # repeated vertex
     (polygon([[0, 0], [1, 0], [1, 1], [1, 1], [0, 1]]), [f"{OUTER}/3"], "(1, 1)"),
     (polygon([[0, 0], [1, 0], [0, 0]]), [OUTER], "three"),  # two different vertices
@@ -234,8 +235,8 @@ PLACES = [
     (polygon(SQUARE, SQUARE), None, "runs along"),
     (multi([SQUARE], [square(0.75, 0.75, 1)]), None, "(1, 0.75)"),  # pieces cross
     (multi([SQUARE], [square(0.25, 0.25, 0.5)]), [f"{PIECES}/0/0"], "(0.5, 0.5)"),  # one inside the other
-    (multi([SQUARE], [SQUARE]), None, "overlap"),
-    (multi([SQUARE], [[[0, 0], [1, 0], [1, 1]]]), None, "overlap"),
+    (multi([SQUARE], [SQUARE]), [f"{PIECES}/1/0/{i}" for i in (0, 1, 3)], "same side"),
+    (multi([SQUARE], [[[0, 0], [1, 0], [1, 1]]]), [f"{PIECES}/1/0/0", f"{PIECES}/1/0/1"], "same side"),
     # The boundaries meet in vertices only, and cross there.
     (
         multi([[[0, 0], [2, 0], [2, 1], [2, 2], [0, 2]]], [[[2, 1], [1, 0], [1, -1], [3, -1], [3, 1]]]),
