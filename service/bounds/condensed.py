@@ -19,9 +19,25 @@ def assemble(local: Array, numbers: NDArray[np.int64], size: int) -> csc_matrix:
     return csc_matrix(coo_matrix((local[keep], (rows[keep], columns[keep])), shape=(size, size)))
 
 
+class NotPositive(ArithmeticError):
+    """A matrix that should be positive definite is not."""
+
+
 def positive_solver(matrix: csc_matrix) -> SuperLU:
-    """Factorisation of a symmetric positive definite matrix."""
-    return splu(matrix, permc_spec="MMD_AT_PLUS_A", diag_pivot_thresh=0.0, options={"SymmetricMode": True})
+    """Factorisation of a symmetric positive definite matrix.
+
+    Raises
+    ------
+    NotPositive
+        If a pivot is not positive.
+    """
+    try:
+        factor = splu(matrix, permc_spec="MMD_AT_PLUS_A", diag_pivot_thresh=0.0, options={"SymmetricMode": True})
+    except RuntimeError as error:
+        raise NotPositive(str(error)) from error
+    if not np.all(factor.U.diagonal() > 0):
+        raise NotPositive("negative pivot")
+    return factor
 
 
 @dataclass(frozen=True)

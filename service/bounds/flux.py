@@ -13,10 +13,10 @@ import numpy as np
 from numpy.typing import NDArray
 
 from service.bounds.condensed import Numbering, assemble, positive_solver
-from service.bounds.ritz import Gram, gram
+from service.bounds.gram import Gram, gram
 from service.bounds.rounding import gamma
-from service.elements.reference import REFERENCE_ERROR, FluxReference, flux_reference
-from service.forms.pencil import Pencil
+from service.elements.reference import REFERENCE_ERROR, FluxReference, flux_reference, magnitude
+from service.forms.form import Form
 
 Array = NDArray[np.float64]
 
@@ -31,55 +31,58 @@ class FluxSpace:
     Coefficients of the two cells at a facet are opposite to the bit, so that normal traces match exactly.
     """
 
-    pencil: Pencil
+    form: Form
     order: int
 
     @property
     def reference(self) -> FluxReference:
         """Tensors on the unit simplex."""
-        return flux_reference(self.pencil.mesh.dimension, self.order)
+        return flux_reference(self.form.mesh.dimension, self.order)
 
     @cached_property
-    def _energy(self) -> Array:
-        """(nc, n', n') local energies of facet functions and divergence-free bubbles."""
-        reference, d = self.reference, self.pencil.mesh.dimension
-        used = reference.facet + reference.free
-        tensor = reference.mass[:, :, :used, :used].reshape(d * d, -1)
-        return np.asarray((self.pencil.flux_metric.reshape(-1, d * d) @ tensor).reshape(-1, used, used))
+    def metric(self) -> Array:
+        """(nc, d, d) M with int_T G^-1 s . t = sum_ab M_ab int s^a t^b for Piola-mapped fields."""
+        spans = self.form.mesh.spans
+        metric = spans.swapaxes(1, 2) @ np.linalg.solve(self.form.diffusion[:, 0], spans)
+        metric /= self.form.jacobian[:, None, None]
+        return np.asarray((metric + metric.swapaxes(1, 2)) / 2)
 
-    def apply(self, fields: Array) -> Array:
-        """Local energy matrices times coefficients."""
-        d, metric = self.pencil.mesh.dimension, self.pencil.flux_metric
-        result = np.zeros_like(fields)
-        for a in range(d):
-            for b in range(d):
-                result += metric[:, a, b, None, None] * (self.reference.mass[a, b] @ fields)
-        return result
+    def local(self, absolute: bool = False) -> Array:
+        """Local energies (nc, n, n); with ``absolute`` the sum of absolute values of all that enters them."""
+        d, count = self.form.mesh.dimension, self.reference.mass.shape[-1]
+        metric = np.abs(self.metric) if absolute else self.metric
+        tensor = magnitude(self.reference.mass) if absolute else self.reference.mass
+        flat = metric.reshape(-1, d * d) @ tensor.reshape(d * d, -1)
+        return np.asarray(flat.reshape(-1, count, count))
+
+    @cached_property
+    def energy(self) -> Array:
+        """Local energies."""
+        return self.local()
 
     def energy_gram(self, fields: Array) -> Gram:
         """Inner products int G^-1 s_i . s_j."""
-        diagonal = np.diag(np.trace(self.reference.mass))
-        weights = 1.01 * np.linalg.norm(self.pencil.flux_metric, axis=(1, 2))[:, None] * diagonal
-        d = self.pencil.mesh.dimension
-        return gram(fields, self.apply(fields), weights, 2 * len(diagonal) + 2 * d**2 + 8)
+        relative = 4 * REFERENCE_ERROR + gamma(2 * fields.shape[1] + 4 * self.form.mesh.dimension**2 + 16)
+        return gram(fields, self.energy, self.local(absolute=True), relative)
 
     def equilibrate(self, sources: Array) -> Array:
         """Fields (nc, n, m) whose divergences are the given polynomials, up to rounding.
 
         sources : (nc, q, m) moments of h_i times the Jacobian against the orthonormal polynomials of the unit simplex.
         """
-        mesh, reference = self.pencil.mesh, self.reference
+        mesh, reference = self.form.mesh, self.reference
         cells, columns = len(mesh.cells), sources.shape[2]
         facet, free = reference.facet, reference.free
         per_facet = facet // (mesh.dimension + 1)
 
         bubbles = np.zeros((cells, reference.mass.shape[-1], columns))
         bubbles[:, facet + free :] = sources[:, 1:]
-        load = -self.apply(bubbles)[:, : facet + free]
+        used = facet + free
+        load = -self.energy[:, :used, used:] @ bubbles[:, used:]
         # Divergence-free bubbles out of the way.
-        inner = np.linalg.inv(self._energy[:, facet:, facet:])
-        coupling = inner @ self._energy[:, facet:, :facet]
-        schur = self._energy[:, :facet, :facet] - self._energy[:, :facet, facet:] @ coupling
+        inner = np.linalg.inv(self.energy[:, facet:used, facet:used])
+        coupling = inner @ self.energy[:, facet:used, :facet]
+        schur = self.energy[:, :facet, :facet] - self.energy[:, :facet, facet:used] @ coupling
         reduced = load[:, :facet] - coupling.transpose(0, 2, 1) @ load[:, facet:]
         # Facet coefficients with the right outflow: f = S^-1 (load - multiplier - c y), c . f = total.
         outflow = reference.divergence[0, :facet]
@@ -89,7 +92,7 @@ class FluxSpace:
         mobility = inverse - spread[:, :, None] * spread[:, None, :] / stiffness[:, None, None]
         particular = mobility @ reduced + (spread / stiffness[:, None])[:, :, None] * sources[:, None, 0]
 
-        free_facets = ~self.pencil.dirichlet
+        free_facets = ~self.form.dirichlet
         start = per_facet * (np.cumsum(free_facets) - 1)
         per = np.where(free_facets[:, None], start[:, None] + np.arange(per_facet), -1)
         numbering = Numbering(per[mesh.cell_facets].reshape(cells, -1), 0)
@@ -102,7 +105,7 @@ class FluxSpace:
 
     def _conforming(self, outflows: Array) -> Array:
         """Facet coefficients made opposite on both sides and zero on the Neumann part."""
-        mesh = self.pencil.mesh
+        mesh = self.form.mesh
         cells, _, columns = outflows.shape
         faces = mesh.dimension + 1
         shaped = outflows.reshape(cells, faces, -1, columns)
@@ -111,15 +114,12 @@ class FluxSpace:
         total = np.zeros((len(mesh.facets), shaped.shape[2], columns))
         np.add.at(total, mesh.cell_facets, sign * shaped)
         boundary = mesh.facet_cells[:, 1] < 0
-        factor = np.where(boundary, np.where(self.pencil.dirichlet, 1.0, 0.0), 0.5)
+        factor = np.where(boundary, np.where(self.form.dirichlet, 1.0, 0.0), 0.5)
         mean = total * factor[:, None, None]
         return np.asarray((sign * mean[mesh.cell_facets]).reshape(outflows.shape))
 
     def divergence_moments(self, fields: Array) -> tuple[Array, Array]:
-        """Moments (nc, q, m) of the divergence times the Jacobian, and a bound (nc, m) of the rounding of each."""
+        """Moments (nc, q, m) of the divergence times the Jacobian, and a bound of the error of each."""
         divergence = self.reference.divergence
-        size = np.linalg.norm(divergence, axis=0) + REFERENCE_ERROR * np.sqrt(
-            np.diag(np.trace(self.reference.mass))
-        )
-        relative = 2 * (REFERENCE_ERROR + gamma(2 * divergence.shape[1]))
-        return divergence @ fields, relative * np.einsum("n,cnm->cm", size, np.abs(fields))
+        relative = 2 * REFERENCE_ERROR + gamma(2 * divergence.shape[1])
+        return divergence @ fields, relative * (magnitude(divergence) @ np.abs(fields))

@@ -47,7 +47,8 @@ def smallest_pairs(
     (b,) ascending eigenvalue approximations (of A against M) and (n, b) vectors.
     """
     size = start.shape[1]
-    block = orthonormalise(start, mass)
+    # One application of the inverse first: it removes what the mass matrix does not see.
+    block = orthonormalise(inverse(mass(start)), mass)
     before = np.full(wanted, np.inf)
     values, vectors = np.zeros(0), block
     for _ in range(rounds):

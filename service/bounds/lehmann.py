@@ -7,8 +7,10 @@ import numpy as np
 from numpy.typing import NDArray
 
 from service.bounds.flux import FluxSpace
-from service.bounds.ritz import Gram, TrialSpace, gram
-from service.bounds.rounding import UNIT, down, gamma, up
+from service.bounds.gram import Gram
+from service.bounds.ritz import TrialSpace
+from service.bounds.rounding import UNIT, down, exact_sum, gamma, up
+from service.elements.reference import REFERENCE_ERROR, magnitude
 
 Array = NDArray[np.float64]
 
@@ -44,11 +46,15 @@ def definite_pencil(first: Array, second: Array) -> tuple[Array, Array, float, f
     return (values, vectors, e, f) if f < 0.5 else None
 
 
-def upper_bounds(energy: Gram, mass: Gram) -> Array:
-    """Proved upper bounds of tau_1..tau_m: the Ritz values of m trial functions, errors of both matrices included."""
+def upper_bounds(energy: Gram, mass: Gram, parts: Gram, uncertainty: float) -> Array:
+    """Proved upper bounds of tau_1..tau_m for the true forms: the Ritz values of m trial functions.
+
+    parts : the inner products of the sum of the absolute values of the parts of A.
+    uncertainty : of each part of both forms.
+    """
     count = len(energy.matrix)
-    above = energy.matrix + np.diag(count * energy.size)
-    below = mass.matrix - np.diag(count * mass.size)
+    above = energy.matrix + energy.slack + uncertainty * (parts.matrix + parts.slack)
+    below = (mass.matrix - mass.slack) * (1 - uncertainty)
     solved = definite_pencil(above, below)
     if solved is None:
         return np.full(count, np.inf)
@@ -69,15 +75,13 @@ def lower_bounds(energy: Gram, mass: Gram, dual: Gram, rho: float) -> Array:
     nothing = np.full(count, -np.inf)
     left = energy.matrix - rho * mass.matrix
     right = energy.matrix - 2 * rho * mass.matrix + rho**2 * dual.matrix
-    magnitude = np.abs(np.diag(energy.matrix)) + 2 * rho * np.diag(mass.matrix) + rho**2 * np.diag(dual.matrix)
-    formed = 8 * UNIT * count * magnitude
-    sizes = count * (energy.size + 2 * rho * mass.size + rho**2 * dual.size)
+    slack = energy.slack + 2 * rho * mass.slack + rho**2 * dual.slack
     # Larger forms move every negative eigenvalue toward zero, hence the bounds down.
-    solved = definite_pencil(left + np.diag(sizes + formed), right + np.diag(sizes + formed))
+    solved = definite_pencil(left + 1.0001 * slack, right + 1.0001 * slack)
     if solved is None:
         return nothing
     values, _, e, f = solved
-    if values[-1] + e >= 0:
+    if not values[-1] + e < 0:
         return nothing
     shares = [(v + e) / (1 + f) for v in values]
     ascending = [down(rho - up(rho / (1 - mu), 8), 8) for mu in shares]
@@ -87,33 +91,26 @@ def lower_bounds(energy: Gram, mass: Gram, dual: Gram, rho: float) -> Array:
 def goerisch_gram(trial: TrialSpace, flux: FluxSpace, functions: Array, ratios: Array) -> Gram:
     """Inner products of w_i = (G^-1 s_i, (b u_i + div s_i) / p) for trial functions with approximate ratios A/B.
 
+    Coefficients are constant on each cell, there are no facet terms, and p > 0.
+
     s_i has the divergence (p - t_i b) / t_i u_i that makes w_i = (grad u_i, u_i) / t_i for an eigenfunction, and
     least energy. <w_i, (grad v, v)> = B(u_i, v) holds for every such field.
     """
-    pencil = trial.pencil
+    energy, weight = trial.pencil.energy, trial.pencil.weight
     moments = trial.reference.moments @ functions
-    jacobian = pencil.jacobian[:, None, None]
-    factor = pencil.potential[:, None, None] / ratios - pencil.weight[:, None, None]
-    fields = flux.equilibrate(jacobian * factor * moments)
-    spread, rounding = flux.divergence_moments(fields)
-    weight = pencil.weight[:, None, None] * jacobian
-    sizes = np.sqrt(np.diag(trial.reference.mass))
-    relative = 2.0**-42 + gamma(2 * len(sizes) + 8)
-    own = relative * weight[:, 0] * np.einsum("n,cnm->cm", sizes, np.abs(functions))
-    residual = weight * moments + spread
-    error = own + rounding + 4 * UNIT * np.max(np.abs(residual), axis=1)
-    scale = 1 / (pencil.potential * pencil.jacobian)
+    jacobian = energy.jacobian[:, None, None]
+    p, b = energy.potential[:, :, None], weight.potential[:, :, None]
+    fields = flux.equilibrate(jacobian * (p / ratios - b) * moments)
+    spread, doubt = flux.divergence_moments(fields)
+    residual = b * jacobian * moments + spread
+    relative = 2 * REFERENCE_ERROR + gamma(2 * functions.shape[1] + 8)
+    doubt = doubt + relative * b * jacobian * (magnitude(trial.reference.moments) @ np.abs(functions))
+    doubt = doubt + 4 * UNIT * np.abs(residual)
     # Moments against orthonormal polynomials: the squared norm is their sum of squares over p |det J|.
-    count = residual.shape[1]
-    weights = np.broadcast_to(1.01 * scale[:, None], (len(scale), count))
-    second = gram(residual, scale[:, None, None] * residual, weights, 2 * count + 8)
-    # On a cell |error_ij| <= |r_i||d_j| + |d_i||r_j| + |d_i||d_j|, |d| <= error sqrt(count); by Cauchy-Schwarz that is at
-    # most sqrt(size_i size_j) with size = balance r^2 + d^2 / balance + d^2, whatever the balance of the cell.
-    present = scale[:, None] * np.sum(residual**2, axis=1)
-    wrong = scale[:, None] * count * error**2
-    balance = np.sqrt((np.max(wrong, axis=1) + 1e-300) / (np.max(present, axis=1) + 1e-300))[:, None]
-    size = second.size + 1.01 * np.sum(balance * present + wrong / balance + wrong, axis=0)
+    scaled = residual / (p * jacobian)
+    matrix = exact_sum(scaled.swapaxes(1, 2) @ residual)
+    size, blur = np.abs(scaled), doubt / (p * jacobian)
+    error = blur.swapaxes(1, 2) @ (np.abs(residual) + doubt)
+    error = exact_sum(error + error.swapaxes(1, 2) + gamma(residual.shape[1] + 8) * (size.swapaxes(1, 2) @ np.abs(residual)))
     # The forms are those of the computed gradient metric; the flux metric is its inverse up to metric_error.
-    energy = flux.energy_gram(fields)
-    inverse = 1 + 4 * pencil.metric_error
-    return Gram(inverse * energy.matrix, inverse * energy.size) + Gram(second.matrix, size)
+    return flux.energy_gram(fields).scaled(1 + 4 * energy.metric_error) + Gram((matrix + matrix.T) / 2, 1.01 * error)

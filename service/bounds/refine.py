@@ -3,25 +3,28 @@
 import math
 import time
 from collections.abc import Callable, Iterator
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
 
+from service.bounds.condensed import NotPositive
+from service.bounds.counting import reaches
 from service.bounds.enclosure import UNKNOWN, Enclosure
 from service.bounds.flux import FluxSpace
 from service.bounds.lehmann import goerisch_gram, lower_bounds, upper_bounds
-from service.bounds.minorant import ceiling
 from service.bounds.ritz import TrialSpace
 from service.bounds.rounding import down, up
-from service.bounds.separation import MARGIN, Separation, counted_bound, reachable, separate
-from service.errors import ComputationError
-from service.elements.hybrid import MAX_HYBRID_ORDER
+from service.bounds.separation import CLEAR_GAP, LEAST_GAP, Separation, counted_bound, gap_above, reachable, separate
 from service.elements.reference import MAX_ORDER
-from service.forms.pencil import Pencil
+from service.errors import ComputationError
+from service.forms.form import Pencil
 from service.meshing.mesh import Mesh
 
 Array = NDArray[np.float64]
+
+LARGEST_ERROR = 0.1
+"""Largest relative error of the forms, from the shapes of cells, with which anything is still concluded."""
 
 FIRST_ORDER = 3
 """Order of the first look at the spectrum."""
@@ -71,22 +74,35 @@ def sharpen(
     """Enclosure of tau_index from trial functions of one order and fluxes of the same order."""
     used = max(cut.count, index)
     functions, ratios = functions[:, :, :used], ratios[:used]
-    # A power of two near the wanted ratio: adding and removing it costs next to nothing.
-    shift = 2.0 ** round(math.log2(ratios[index - 1]))
+    shift = positive_shift(pencil, float(ratios[index - 1]))
     shifted = pencil.shifted(shift)
     trial = TrialSpace(shifted, order)
-    mass = trial.mass_gram(functions, shifted.weight)
-    energy = trial.gradient_gram(functions) + trial.mass_gram(functions, shifted.potential)
+    mass = trial.gram(pencil.weight, functions)
+    energy = trial.gram(shifted.energy, functions)
+    parts = trial.gram(shifted.energy.absolute(), functions)
     error = pencil.ratio_error
-    ritz = upper_bounds(energy, mass)[index - 1] - shift
-    above = Enclosure(-math.inf, up(ritz * (1 + error)), upper_by=f"Ritz, order {order}")
-    if not cut.count:
+    if functions.shape[2] < index or error > LARGEST_ERROR:
+        return UNKNOWN
+    ritz = upper_bounds(energy, mass, parts, shifted.energy.uncertainty)[index - 1] - shift
+    above = Enclosure(-math.inf, up(ritz), upper_by=f"Ritz, order {order}")
+    if not cut.count or functions.shape[2] < cut.count:
         return above
-    dual = goerisch_gram(trial, FluxSpace(shifted, order), functions, ratios + shift)
-    rho = down(cut.rho * (1 - error) + shift)
-    below = lower_bounds(energy, mass, dual, rho)[index - 1] - shift
-    lower = down(below * (1 - error)) if below > 0 else -math.inf
-    return above.intersect(Enclosure(lower, math.inf, lower_by=f"Lehmann-Goerisch, flux order {order}"))
+    dual = goerisch_gram(trial, FluxSpace(shifted.energy, order), functions, ratios + shift)
+    rho = down((cut.rho + shift) * (1 - error))
+    below = down(lower_bounds(energy, mass, dual, rho)[index - 1] * (1 - error)) - shift
+    return above.intersect(Enclosure(down(below), math.inf, lower_by=f"Lehmann-Goerisch, flux order {order}"))
+
+
+def positive_shift(pencil: Pencil, ratio: float) -> float:
+    """A power of two near the ratio: adding and removing it costs next to nothing.
+
+    Large enough to make the potential of A + shift B positive on every cell, where B is a mass.
+    """
+    least = abs(ratio) + 1e-300
+    density = pencil.weight.potential[:, 0]
+    if np.all(density > 0):
+        least = max(least, 2 * float(np.max(-pencil.energy.potential[:, 0] / density)))
+    return 2.0 ** round(math.log2(least) + (0.5 if least > abs(ratio) + 1e-300 else 0.0))
 
 
 @dataclass(frozen=True)
@@ -117,18 +133,47 @@ def look(
     ahead = 3
     while True:
         wanted = index + ahead
-        ratios, functions = space.smallest(1.0, wanted, 1e-4, rounds=4)
+        ratios, functions = first_pairs(space, wanted)
         ritz = ratios[:wanted]
-        goal = 1.1 * float(ritz[min(index, len(ritz) - 1)])
-        fine = reachable(pencil, pencil_on, refined, goal, cells)
-        if fine is None:
-            shrink = 0.9 * math.sqrt(MARGIN * ceiling(pencil) / goal)
-            return Prospect(ratios, functions, Separation(0, 0.0, 0.0, pencil), shrink)
-        cut = separate(fine, ritz, index) if len(ritz) > index else Separation(0, 0.0, 0.0, fine)
-        dense = float(ritz[-1]) < 1.05 * float(ritz[index - 1]) and len(fine.mesh.cells) > 1500
-        if cut.gap > 0.02 or ahead >= LOOK_AHEAD or len(ritz) < wanted or dense:
-            return Prospect(ratios, functions, cut)
+        sharp = can_sharpen(pencil)
+        size, gap = gap_above(ritz, index) if sharp and len(ritz) > index else (0, 0.0)
+        if not sharp or gap >= CLEAR_GAP or ahead >= LOOK_AHEAD or len(ritz) < wanted:
+            break
         ahead *= 2
+    useful = gap >= LEAST_GAP
+    goal = float(ritz[size if useful else index - 1])
+    fine = reachable(pencil, pencil_on, refined, goal, cells)
+    if fine is None:
+        return Prospect(ratios, functions, Separation(0, 0.0, 0.0, pencil), shrink_to(pencil, goal))
+    cut = separate(fine, ritz, size) if useful else Separation(0, 0.0, 0.0, fine)
+    return Prospect(ratios, functions, cut)
+
+
+def can_sharpen(pencil: Pencil) -> bool:
+    """Whether the Lehmann-Goerisch bound applies: constant coefficients per cell, B a mass, no facet terms."""
+    return pencil.energy.steady and pencil.weight.steady and not np.any(pencil.weight.diffusion)
+
+
+def first_pairs(space: TrialSpace, wanted: int) -> tuple[Array, Array]:
+    """Rough smallest ratios, with a shift found by trial that makes the operator positive definite."""
+    shift = 1.0
+    while True:
+        try:
+            return space.smallest(shift, wanted, 1e-4, rounds=4)
+        except NotPositive:
+            shift *= 8
+
+
+def shrink_to(pencil: Pencil, goal: float) -> float:
+    """By how much edges must shrink before A - goal B has minorants; found by scaling potentials instead of edges."""
+    form = pencil.at(goal)
+    for halvings in range(1, 40):
+        eased = replace(
+            form, potential=form.potential * 0.25**halvings, facet=form.facet * 0.5**halvings
+        )
+        if reaches(eased):
+            return 0.9 * 0.5 ** (halvings - 0.5)
+    return 0.5
 
 
 def enclose(
@@ -187,7 +232,8 @@ def enclose(
             space = TrialSpace(pencil, following)
             start = space.extend(functions[:, :, : used + 2], order)
             tolerance = 1e-2 * budget.width
-            ratios, functions = space.smallest(float(ratios[index - 1]), used, tolerance, start)
+            shift = max(abs(float(ratios[index - 1])), -2 * float(ratios[0]))
+            ratios, functions = space.smallest(shift, used, tolerance, start)
             order = following
         level += 1
         shrink = 0.5 if prospect.shrink is None else min(0.5, prospect.shrink)
@@ -198,7 +244,7 @@ def enclose(
 
 def count_below(pencil: Pencil, estimate: float, index: int, order: int, width: float) -> Enclosure:
     """What counting alone proves, where no gap in the spectrum lets the sharp bounds work."""
-    rank = min(order, MAX_HYBRID_ORDER)
+    rank = min(order, 4)
     bound = counted_bound(pencil, estimate, index, rank, width)
     by = f"nonconforming minorant of order {rank}, inertia count"
     return Enclosure(bound, math.inf, lower_by=by)

@@ -1,49 +1,19 @@
 """Conforming trial functions of any order and the upper bounds they give (Rayleigh, Ritz)."""
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from functools import cached_property
 
 import numpy as np
 from numpy.typing import NDArray
 
 from service.bounds.condensed import Condensed, Numbering
+from service.bounds.gram import Gram, gram
 from service.bounds.krylov import smallest_pairs
-from service.bounds.rounding import exact_sum, gamma
-from service.elements.reference import REFERENCE_ERROR, ScalarReference, scalar_reference
-from service.forms.pencil import Pencil
+from service.bounds.rounding import gamma
+from service.elements.reference import REFERENCE_ERROR, ScalarReference, magnitude, scalar_reference
+from service.forms.form import Form, Pencil
 
 Array = NDArray[np.float64]
-
-
-@dataclass(frozen=True)
-class Gram:
-    """A matrix of inner products computed in floating point.
-
-    matrix : (m, m).
-    size : (m,) numbers with |error_ij| <= sqrt(size_i size_j); hence the error is at most m diag(size) as a form.
-    """
-
-    matrix: Array
-    size: Array
-
-    def __add__(self, other: "Gram") -> "Gram":
-        return Gram(self.matrix + other.matrix, 1.0001 * (self.size + other.size))
-
-
-def gram(left: Array, right: Array, weights: Array, operations: int) -> Gram:
-    """Inner products of functions given cell by cell, with the allowance for rounding.
-
-    Parameters
-    ----------
-    left : (nc, n, m) coefficients of the functions.
-    right : (nc, n, m) coefficients multiplied by the local matrices.
-    weights : (nc, n) bounds of the diagonal of the exact local matrices.
-    operations : roundings behind an entry of ``right`` and the final product.
-    """
-    matrix = exact_sum(left.transpose(0, 2, 1) @ right)
-    sums = np.einsum("cn,cnm->cm", np.sqrt(weights), np.abs(left))
-    relative = 1.01 * (REFERENCE_ERROR + gamma(operations))
-    return Gram((matrix + matrix.T) / 2, 1.01 * relative * exact_sum(sums**2))
 
 
 @dataclass(frozen=True)
@@ -59,71 +29,81 @@ class TrialSpace:
 
     @property
     def reference(self) -> ScalarReference:
-        """Tensors on the unit simplex."""
-        return scalar_reference(self.pencil.mesh.dimension, self.order)
+        """Tensors on the unit simplex, for the degree of the coefficients."""
+        degree = max(self.pencil.energy.degree, self.pencil.weight.degree)
+        return scalar_reference(self.pencil.mesh.dimension, self.order, degree)
 
     @cached_property
     def numbering(self) -> Numbering:
         """Unknowns: free vertices, then the functions of each free facet, then bubbles (plane meshes)."""
         mesh = self.pencil.mesh
+        dirichlet = self.pencil.energy.dirichlet
         held = np.zeros(len(mesh.points), dtype=bool)
-        held[mesh.facets[self.pencil.dirichlet]] = True
+        held[mesh.facets[dirichlet]] = True
         vertices = np.where(held, -1, np.cumsum(~held) - 1)
-        free = ~self.pencil.dirichlet
         per_facet = self.order - 1
-        start = int(np.sum(~held)) + per_facet * (np.cumsum(free) - 1)
-        facets = np.where(free[:, None], start[:, None] + np.arange(per_facet), -1)
+        start = int(np.sum(~held)) + per_facet * (np.cumsum(~dirichlet) - 1)
+        facets = np.where(dirichlet[:, None], -1, start[:, None] + np.arange(per_facet))
         on_facets = facets[mesh.cell_facets].reshape(len(mesh.cells), -1)
-        bubbles = len(self.reference.mass) - self.reference.skeleton
+        bubbles = len(self.reference.mass[0]) - self.reference.skeleton
         return Numbering(np.concatenate([vertices[mesh.cells], on_facets], axis=1), bubbles)
 
-    def apply_gradient(self, functions: Array) -> Array:
-        """Local stiffness matrices times coefficients."""
-        d = self.pencil.mesh.dimension
-        metric = self.pencil.gradient_metric
-        tensor = self.reference.stiffness
-        result = np.zeros_like(functions)
-        for a in range(d):
-            for b in range(d):
-                result += metric[:, a, b, None, None] * (tensor[a, b] @ functions)
-        return result
+    @cached_property
+    def energy(self) -> Array:
+        """Local matrices of A."""
+        return self.local(self.pencil.energy)
 
-    def apply_mass(self, functions: Array, density: Array) -> Array:
-        """Local mass matrices with a density (nc,) times coefficients."""
-        return np.asarray((density * self.pencil.jacobian)[:, None, None] * (self.reference.mass @ functions))
+    @cached_property
+    def weight(self) -> Array:
+        """Local matrices of B."""
+        return self.local(self.pencil.weight)
 
-    def mass_gram(self, functions: Array, density: Array) -> Gram:
-        """Inner products int density u_i u_j, density >= 0."""
-        diagonal = np.diag(self.reference.mass)
-        weights = 1.01 * (density * self.pencil.jacobian)[:, None] * diagonal
-        count = len(diagonal)
-        return gram(functions, self.apply_mass(functions, density), weights, 2 * count + 8)
+    def local(self, form: Form, absolute: bool = False) -> Array:
+        """Local matrices (nc, n, n) of a form; with ``absolute`` the sum of absolute values of all that enters them."""
+        reference = self.reference
+        cells, d, n = len(form.mesh.cells), form.mesh.dimension, reference.mass.shape[-1]
+        size = np.abs if absolute else np.asarray
+        tensor = magnitude if absolute else np.asarray
+        metric, potential = size(form.gradient_metric), size(form.potential) * form.jacobian[:, None]
+        modes, volume = metric.shape[1], potential.shape[1]
+        result = potential @ tensor(reference.mass[:volume]).reshape(volume, -1)
+        if np.any(metric):
+            result += metric.reshape(cells, -1) @ tensor(reference.stiffness[:modes]).reshape(modes * d * d, -1)
+        result = result.reshape(cells, n, n)
+        if np.any(form.facet):
+            factors = size(form.facet) * form.facet_measure[:, None]
+            owned = form.mesh.facet_cells[form.mesh.cell_facets, 0] == np.arange(cells)[:, None]
+            for face in range(d + 1):
+                traces = tensor(reference.facet_mass[: factors.shape[1], face]).reshape(factors.shape[1], -1)
+                chosen = np.where(owned[:, face, None], factors[form.mesh.cell_facets[:, face]], 0.0)
+                result += (chosen @ traces).reshape(cells, n, n)
+        return np.asarray(result)
 
-    def gradient_gram(self, functions: Array) -> Gram:
-        """Inner products int G grad u_i . grad u_j."""
-        size = np.linalg.norm(self.pencil.gradient_metric, axis=(1, 2))
-        diagonal = np.diag(np.trace(self.reference.stiffness))
-        weights = 1.01 * size[:, None] * diagonal
-        d = self.pencil.mesh.dimension
-        return gram(functions, self.apply_gradient(functions), weights, 2 * len(diagonal) + 2 * d**2 + 8)
+    def gram(self, form: Form, functions: Array) -> Gram:
+        """Inner products of functions in a form, rounding bounded.
 
-    def system(self, shift: float) -> Condensed:
-        """The factorised operator of A + shift B."""
-        d = self.pencil.mesh.dimension
-        tensor = self.reference.stiffness.reshape(d * d, -1)
-        count = len(self.reference.mass)
-        local = (self.pencil.gradient_metric.reshape(-1, d * d) @ tensor).reshape(-1, count, count)
-        density = (self.pencil.potential + shift * self.pencil.weight) * self.pencil.jacobian
-        local += density[:, None, None] * self.reference.mass
-        return Condensed.build(local, self.numbering)
+        Gradients do not see constants: taking a vertex value off first keeps the allowance relative to the variation
+        of a function in a cell instead of its size.
+        """
+        corners = self.pencil.mesh.dimension + 1
+        varying = functions.copy()
+        varying[:, :corners] -= functions[:, :1]
+        slopes = replace(form, potential=np.zeros((len(functions), 1)), facet=np.zeros((len(form.facet), 1)))
+        values = replace(form, diffusion=np.zeros_like(form.diffusion[:, :1]))
+        return self._gram(slopes, varying) + self._gram(values, functions)
+
+    def _gram(self, form: Form, functions: Array) -> Gram:
+        n, d = functions.shape[1], self.pencil.mesh.dimension
+        relative = 4 * REFERENCE_ERROR + gamma(2 * n + 4 * d * d * form.diffusion.shape[1] + 16)
+        return gram(functions, self.local(form), self.local(form, absolute=True), relative)
 
     def extend(self, functions: Array, order: int) -> Array:
         """Coefficients in this space of approximations of functions of a lower ``order`` on the same mesh."""
-        lower = scalar_reference(self.pencil.mesh.dimension, order)
         cells, corners, columns = len(functions), self.pencil.mesh.dimension + 1, functions.shape[2]
-        result = np.zeros((cells, len(self.reference.mass), columns))
+        skeleton = scalar_reference(self.pencil.mesh.dimension, order).skeleton
+        result = np.zeros((cells, self.reference.mass.shape[-1], columns))
         result[:, :corners] = functions[:, :corners]
-        before = functions[:, corners : lower.skeleton].reshape(cells, corners, -1, columns)
+        before = functions[:, corners:skeleton].reshape(cells, corners, -1, columns)
         after = result[:, corners : self.reference.skeleton].reshape(cells, corners, -1, columns)
         after[:, :, : before.shape[2]] = before
         return result
@@ -134,11 +114,17 @@ class TrialSpace:
         """Approximate smallest ratios (b,) and functions (nc, n, b), b >= count if the space is large enough.
 
         ``shift`` makes A + shift B positive definite; ``start`` are functions of this space to begin with.
+
+        Raises
+        ------
+        NotPositive
+            If A + shift B is not positive definite.
         """
-        numbering, system = self.numbering, self.system(shift)
+        numbering = self.numbering
+        system = Condensed.build(self.energy + shift * self.weight, numbering)
 
         def mass(vector: Array) -> Array:
-            return numbering.collect(self.apply_mass(numbering.spread(vector), self.pencil.weight))
+            return numbering.collect(self.weight @ numbering.spread(vector))
 
         if start is None:
             begin = np.random.default_rng(0).standard_normal((numbering.size, min(numbering.size, count + 3)))
@@ -147,5 +133,7 @@ class TrialSpace:
             begin[: int(np.max(corners, initial=-1)) + 1, 0] = 1.0
         else:
             begin = numbering.restrict(start)
-        values, vectors = smallest_pairs(system.solve, mass, begin, min(count, begin.shape[1]), tolerance, rounds)
+        values, vectors = smallest_pairs(
+            system.solve, mass, begin, min(count, begin.shape[1]), tolerance, rounds
+        )
         return values - shift, numbering.spread(vectors)

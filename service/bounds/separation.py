@@ -1,4 +1,4 @@
-"""A proved rough bound rho above the wanted eigenvalue and below the rest: what the sharp bounds start from."""
+"""A proved rough bound rho above the wanted eigenvalue and below the rest, and lower bounds by counting alone."""
 
 import math
 from collections.abc import Callable
@@ -7,23 +7,17 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from service.bounds.minorant import Minorant, ceiling
-from service.forms.pencil import Pencil
+from service.bounds.counting import count, proves, reaches
+from service.forms.form import Pencil
 from service.meshing.mesh import Mesh
 
 Array = NDArray[np.float64]
 
-CLEAR_GAP = 0.25
-"""Relative gap above tau_m that is worth stopping at."""
+CLEAR_GAP = 0.3
+"""Relative gap in the spectrum that is worth stopping at."""
 
-LEAST_GAP = 0.003
+LEAST_GAP = 0.01
 """Relative gap that still helps."""
-
-MARGIN = 0.8
-"""Share of the ceiling up to which a minorant is used: above, too little energy is left for its facet terms."""
-
-HAIRS = (1e-6, 1e-4, 1e-3, 1e-2)
-"""By what shares a candidate is lowered before it is certified: what the eigenvalue solver may have missed."""
 
 
 @dataclass(frozen=True)
@@ -47,66 +41,62 @@ def reachable(
     value: float,
     cells: int,
 ) -> Pencil | None:
-    """The pencil on the mesh, refined uniformly until minorants exist up to ``value``; None if that takes too many cells."""
-    while MARGIN * ceiling(pencil) < value:
+    """The pencil on the mesh, refined uniformly until A - value B has minorants; None if that takes too many cells."""
+    while not reaches(pencil.at(value)):
         if 4 * len(pencil.mesh.cells) > cells:
             return None
         pencil = pencil_on(refined(pencil.mesh))
     return pencil
 
 
-def separate(pencil: Pencil, ritz: Array, index: int) -> Separation:
-    """Chooses where to cut the spectrum above the ratio ``index`` and proves the cut.
+def scale_of(pencil: Pencil, value: float) -> float:
+    """A potential of the size of what is counted, for the form that pays for rounding."""
+    stiff = float(np.mean(np.trace(pencil.energy.diffusion[:, 0], axis1=1, axis2=2)))
+    return max(stiff, abs(value) * float(np.mean(pencil.weight.potential[:, 0])))
 
-    Parameters
-    ----------
-    pencil : on a mesh fine enough for minorants a little above ritz[index].
-    ritz : upper bounds of the smallest ratios, ascending, the last ones only a look ahead.
-    index : number of the wanted ratio, from 1.
+
+def gap_above(ritz: Array, index: int) -> tuple[int, float]:
+    """Where to cut above the ratio ``index``: after which ratio, and how wide the gap is relative to the next one.
+
+    The first clear gap, or else the widest.
     """
-    best = Separation(0, 0.0, 0.0, pencil)
-    limit = MARGIN * ceiling(pencil)
-    trial = min(1.3 * float(ritz[-1]), max(limit / 2, min(limit, 1.3 * float(ritz[index]))))
-    for order in (1, 2, 3) if len(pencil.mesh.cells) > 1500 else (2, 3, 4):
-        minorant = Minorant(pencil, order, trial)
-        bounds = minorant.candidates(len(ritz))
-        gaps = (bounds[index:] - ritz[index - 1 : -1]) / bounds[index:]
-        clear = np.flatnonzero(gaps >= CLEAR_GAP)
-        pick = int(clear[0]) if len(clear) else int(np.argmax(gaps))
-        if gaps[pick] > max(LEAST_GAP, 1.2 * best.gap):
-            count = index + pick
-            rho = certify_below(minorant, float(bounds[count]), count)
-            if rho is not None:
-                rho *= 1 - pencil.ratio_error
-                gap = (rho - float(ritz[count - 1])) / rho
-                best = Separation(count, rho, gap, pencil)
-        if best.gap >= 0.4 * CLEAR_GAP:
-            break
-    return best
+    gaps = (ritz[index:] - ritz[index - 1 : -1]) / np.abs(ritz[index:])
+    clear = np.flatnonzero(gaps >= CLEAR_GAP)
+    pick = int(clear[0]) if len(clear) else int(np.argmax(gaps))
+    return index + pick, float(gaps[pick])
 
 
-def certify_below(minorant: Minorant, candidate: float, count: int) -> float | None:
-    """The proof for the candidate lowered by the first share that succeeds."""
-    proofs = (minorant.certify(candidate * (1 - hair), count) for hair in HAIRS)
-    return next((proof for proof in proofs if proof is not None), None)
+def separate(pencil: Pencil, ritz: Array, size: int) -> Separation:
+    """Proves a cut, for the true forms, between the ratios ``size`` and ``size`` + 1, given their Ritz values.
+
+    pencil : on a mesh fine enough for minorants at ritz[size].
+    """
+    below, above = float(ritz[size - 1]), float(ritz[size])
+    for order in (1, 2, 3) if len(pencil.mesh.cells) > 1500 else (2, 3, 1):
+        for part in (0.8, 0.5, 0.25):
+            rho = below + part * (above - below)
+            if proves(pencil.at(rho), order, size, scale_of(pencil, rho)):
+                return Separation(size, rho, (rho - below) / abs(above), pencil)
+    return Separation(0, 0.0, 0.0, pencil)
 
 
 def counted_bound(pencil: Pencil, estimate: float, index: int, order: int, width: float) -> float:
     """A proved lower bound of tau_index by counting alone, -inf where there is none.
 
-    Bisects the distance below the upper bound ``estimate``, on a logarithmic scale from ``width`` / 100.
+    Bisects the distance below the upper bound ``estimate``, relative and on a logarithmic scale from ``width`` / 100.
     """
-    minorant = Minorant(pencil, order, min(1.01 * estimate, MARGIN * ceiling(pencil)))
-    low, high = math.log(width / 100), 0.0
+    low, high = math.log(width / 100), math.log(2.0)
+    size = abs(estimate)
 
     def value(distance: float) -> float:
-        return min(estimate * (1 - 0.999 * math.exp(distance)), minorant.trial)
+        return estimate - size * math.exp(distance)
 
-    for _ in range(10):
+    for _ in range(7):
         middle = (low + high) / 2
-        if minorant.count(value(middle)) < index:
+        found = count(pencil.at(value(middle)), order)
+        if found is not None and found < index:
             high = middle
         else:
             low = middle
-    proved = minorant.certify(value(high), index - 1)
-    return -math.inf if proved is None else proved * (1 - pencil.ratio_error)
+    t = value(high)
+    return t if proves(pencil.at(t), order, index - 1, scale_of(pencil, t)) else -math.inf

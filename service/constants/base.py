@@ -3,7 +3,7 @@
 from collections.abc import Callable
 from dataclasses import dataclass
 
-from service.forms.pencil import Pencil
+from service.forms.form import Pencil
 from service.meshing.mesh import Mesh
 from service.problem.domain import PlaneDomain
 from service.problem.request import Request

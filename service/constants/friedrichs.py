@@ -3,7 +3,7 @@
 import numpy as np
 
 from service.constants.base import Absent, Constant, Question
-from service.forms.pencil import Pencil, laplace
+from service.forms.form import Pencil, laplace
 from service.meshing.mesh import Mesh
 from service.problem.request import Request
 

@@ -5,7 +5,7 @@ from dataclasses import replace
 import numpy as np
 
 from service.constants.base import Absent, Constant, Question
-from service.forms.pencil import Pencil, laplace
+from service.forms.form import Pencil, laplace
 from service.meshing.mesh import Mesh
 from service.problem.domain import BoundaryPart
 from service.problem.request import Request

@@ -14,6 +14,19 @@ def gauss(count: int) -> Rule:
     return (nodes + 1) / 2, weights / 2
 
 
+def precise_gauss(count: int) -> Rule:
+    """The same rule in NumPy's longest floating-point type, by Newton's method on the Legendre recurrence."""
+    x = np.polynomial.legendre.leggauss(count)[0].astype(np.longdouble)
+    slope = np.ones_like(x)
+    for _ in range(3):
+        before, now = np.ones_like(x), x.copy()
+        for n in range(1, count):
+            before, now = now, ((2 * n + 1) * x * now - n * before) / (n + 1)
+        slope = count * (x * now - before) / (x * x - 1)
+        x = x - now / slope
+    return (x + 1) / 2, 1 / ((1 - x * x) * slope * slope)
+
+
 def conical(dimension: int, interval: Rule) -> Rule:
     """Product rule on the unit simplex from one on (0, 1), through the collapsed coordinates.
 
@@ -41,6 +54,7 @@ def conical(dimension: int, interval: Rule) -> Rule:
     return points, measure
 
 
-def simplex_rule(dimension: int, degree: int) -> Rule:
+def simplex_rule(dimension: int, degree: int, precise: bool = False) -> Rule:
     """Points (d, n) and positive weights (n,) exact for polynomials of ``degree`` on the unit simplex."""
-    return conical(dimension, gauss((degree + dimension + 1) // 2))
+    rule = precise_gauss if precise else gauss
+    return conical(dimension, rule((degree + dimension + 1) // 2))

@@ -1,10 +1,11 @@
 """Tensors on the reference simplex: all that affine elements ever need of a basis.
 
 Local matrices on an affine cell are combinations of these tensors with a few numbers of the cell (Piola transforms).
-The tensors are computed in doubles with quadrature that is exact in exact arithmetic; tests compare every entry
-for every order in service with multiple-precision arithmetic, and ``REFERENCE_ERROR`` bounds the difference.
+The tensors are computed in the longest floating-point type with quadrature that is exact in exact arithmetic, and rounded
+once; tests compare their entries with multiple-precision arithmetic, and ``REFERENCE_ERROR`` bounds the difference.
 """
 
+import math
 from dataclasses import dataclass
 from functools import lru_cache
 
@@ -20,16 +21,24 @@ Array = NDArray[np.float64]
 MAX_ORDER = 10
 """Highest order for which the tensors are verified."""
 
-REFERENCE_ERROR = 2.0**-43
-"""|computed - exact| <= REFERENCE_ERROR sqrt(D_i D_j), D the diagonal of the mass or (summed) stiffness tensor."""
+REFERENCE_ERROR = 2.0**-48
+"""Bound of an entry's error, relative to ``magnitude`` of its tensor."""
+
+
+def magnitude(tensor: Array) -> Array:
+    """What the errors of a tensor's entries are measured against: their size plus a share of the largest."""
+    return np.asarray(np.abs(tensor) + np.max(np.abs(tensor)) / 64)
 
 
 @dataclass(frozen=True)
 class ScalarReference:
     """Hierarchical H1 element of one order: skeleton functions first, then bubbles.
 
-    mass : (n, n) integrals of phi_i phi_j.
-    stiffness : (d, d, n, n) integrals of d_a phi_i d_b phi_j.
+    Coefficient modes psi~ are the orthogonal polynomials of the unit simplex, scaled so that psi~_0 = 1.
+
+    mass : (m, n, n) integrals of psi~_m phi_i phi_j.
+    stiffness : (m, d, d, n, n) integrals of psi~_m d_a phi_i d_b phi_j.
+    facet_mass : (mf, d+1, n, n) means over each facet of chi~_m phi_i phi_j, chi~ the modes of the facet.
     moments : (q, n) integrals of psi_l phi_j, psi an orthonormal basis of the polynomials of that order.
     skeleton : number of functions that live on the boundary of the simplex too.
     """
@@ -37,6 +46,7 @@ class ScalarReference:
     order: int
     mass: Array
     stiffness: Array
+    facet_mass: Array
     moments: Array
     skeleton: int
 
@@ -60,9 +70,9 @@ class FluxReference:
     free: int
 
 
-def scalar_norms(dimension: int, degree: int) -> Array:
+def scalar_norms(dimension: int, degree: int, precise: bool = False) -> Array:
     """L2 norms of the orthogonal polynomials of the unit simplex."""
-    points, weights = simplex_rule(dimension, 2 * degree)
+    points, weights = simplex_rule(dimension, 2 * degree, precise)
     values = np.array([jet[0] for jet in simplex_polynomials(degree, scalar.barycentric(points))])
     return np.asarray(np.sqrt(values**2 @ weights))
 
@@ -73,33 +83,50 @@ def raw_orthonormal(dimension: int, degree: int, points: Array, norms: Array) ->
     return np.asarray(jets / norms[:, None, None])
 
 
-def orthonormal(dimension: int, degree: int, points: Array) -> Array:
-    """Orthonormal polynomials on the unit simplex at points (d, n): (q, n)."""
-    return raw_orthonormal(dimension, degree, points, scalar_norms(dimension, degree))[:, 0]
-
-
-def scalar_tensors(dimension: int, order: int) -> tuple[Array, Array, Array]:
-    """Mass, stiffness and moments of the raw scalar basis."""
-    points, weights = simplex_rule(dimension, 2 * order)
-    jets = np.array(scalar.basis(dimension, order, points))
+def scalar_tensors(dimension: int, order: int, degree: int) -> tuple[Array, Array, Array, Array]:
+    """Mass, stiffness, facet mass and moments of the raw scalar basis."""
+    d = dimension
+    points, weights = simplex_rule(d, 2 * order + degree, precise=True)
+    jets = np.array(scalar.basis(d, order, points))
     values, slopes = jets[:, 0], jets[:, 1:]
-    weighted = slopes * weights
+    norms = scalar_norms(d, max(order, degree), precise=True)
+    psi = raw_orthonormal(d, max(order, degree), points, norms)[:, 0]
+    modes = norms[0] * psi[: simplex_dimension(d, degree)] * weights
+    mass = np.array([(values * mode) @ values.T for mode in modes])
     stiffness = np.array(
-        [[weighted[:, a] @ slopes[:, b].T for b in range(dimension)] for a in range(dimension)]
+        [[[(slopes[:, a] * mode) @ slopes[:, b].T for b in range(d)] for a in range(d)] for mode in modes]
     )
-    psi = orthonormal(dimension, order, points)
-    return (values * weights) @ values.T, stiffness, (psi * weights) @ values.T
+    moments = (psi[: simplex_dimension(d, order)] * weights) @ values.T
+    on_facet, measure, chi = facet_modes(d, degree, 2 * order + degree)
+    corners = np.hstack([np.zeros((d, 1)), np.eye(d)])
+    traces = [
+        np.array(scalar.basis(d, order, corners[:, list(facet)] @ on_facet))[:, 0]
+        for facet in scalar.subsimplices(d, d)
+    ]
+    facet_mass = np.array([[(trace * mode * measure) @ trace.T for trace in traces] for mode in chi])
+    return mass, stiffness, facet_mass, moments
+
+
+def facet_modes(dimension: int, degree: int, exact: int) -> tuple[Array, Array, Array]:
+    """Barycentric points (d, n) on a facet, weights of its mean, and coefficient modes (mf, n); exact to a degree."""
+    if dimension == 1:
+        return np.ones((1, 1)), np.ones(1), np.ones((1, 1))
+    points, weights = simplex_rule(dimension - 1, exact, precise=True)
+    weights = weights * math.factorial(dimension - 1)
+    raw = np.array([jet[0] for jet in simplex_polynomials(degree, scalar.barycentric(points))])
+    chi = raw / np.sqrt(raw**2 @ weights)[:, None]
+    return np.vstack([1 - points.sum(axis=0), points]), weights, chi
 
 
 def flux_tensors(dimension: int, order: int) -> tuple[Array, Array]:
     """Mass and divergence of the raw Raviart-Thomas basis."""
-    points, weights = simplex_rule(dimension, 2 * order + 2)
+    points, weights = simplex_rule(dimension, 2 * order + 2, precise=True)
     values, divergences = raviart_thomas.basis(dimension, order, points)
     weighted = values * weights
     mass = np.array(
         [[weighted[:, a] @ values[:, b].T for b in range(dimension)] for a in range(dimension)]
     )
-    psi = orthonormal(dimension, order, points)
+    psi = raw_orthonormal(dimension, order, points, scalar_norms(dimension, order, precise=True))[:, 0]
     return mass, (psi * weights) @ divergences.T
 
 
@@ -145,14 +172,13 @@ def flux_transform(mass: Array, divergence: Array, facet: int) -> tuple[Array, i
 
 
 @lru_cache(maxsize=64)
-def scalar_reference(dimension: int, order: int) -> ScalarReference:
-    """Tensors of the scalar element of ``order`` >= 1."""
+def scalar_reference(dimension: int, order: int, degree: int = 0) -> ScalarReference:
+    """Tensors of the scalar element of ``order`` >= 1 for coefficients of ``degree``; computed precisely, rounded once."""
     skeleton = scalar.skeleton_size(dimension, order)
-    mass, stiffness, moments = scalar_tensors(dimension, order)
-    change = scalar_transform(stiffness, skeleton)
-    return ScalarReference(
-        order, change_basis(mass, change), change_basis(stiffness, change), moments @ change, skeleton
-    )
+    mass, stiffness, facet_mass, moments = scalar_tensors(dimension, order, degree)
+    change = scalar_transform(stiffness[0].astype(float), skeleton)
+    bilinear = (change_basis(tensor, change).astype(float) for tensor in (mass, stiffness, facet_mass))
+    return ScalarReference(order, *bilinear, (moments @ change).astype(float), skeleton)
 
 
 @lru_cache(maxsize=64)
@@ -160,5 +186,6 @@ def flux_reference(dimension: int, order: int) -> FluxReference:
     """Tensors of the Raviart-Thomas element whose divergences are the polynomials of ``order`` >= 0."""
     mass, divergence = flux_tensors(dimension, order)
     facet = (dimension + 1) * simplex_dimension(dimension - 1, order)
-    change, free = flux_transform(mass, divergence, facet)
-    return FluxReference(order, change_basis(mass, change), divergence @ change, facet, free)
+    change, free = flux_transform(mass.astype(float), divergence.astype(float), facet)
+    tensors = change_basis(mass, change).astype(float), (divergence @ change).astype(float)
+    return FluxReference(order, *tensors, facet, free)

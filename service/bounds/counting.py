@@ -1,0 +1,332 @@
+"""How many negative directions a quadratic form has: a nonconforming minorant of any order, counted and proved.
+
+For u in V keep, on each cell, its L2 projection u_T on polynomials of order k + 1 and, on each facet, the projection u_F of its
+trace on order k. They determine l(w) = int G grad u . grad w for every polynomial w of order j = k + 1 - q, where G has degree q
+(integrate by parts). Hence, for any R of order j that depends linearly on (u_T, u_F), and e = u - R of zero mean,
+
+    int G grad u . grad u = 2 l(R) - int G grad R . grad R + int G grad e . grad e,
+    int G grad e . grad e >= a (|u_T - R|^2 + |u - u_T|^2) / c^2 + b w sum_F mean_F (u_F - P_F R)^2 + sum_F s_F |e|_F^2.
+
+c is the Poincare constant of the cell in the metric of the floor of G: h / j_(1,1) on triangles (Laugesen and Siudeja,
+J. Differential Equations 249 (2010) 118-135), h / pi on any simplex (Payne and Weinberger 1960; Bebendorf 2003), h the longest
+edge. The trace identity gives mean_F f^2 = mean_T (f^2 + (2/d) f (x - P) . grad f) <= (c^2 + 2 h c / d) mean_T |grad f|^2 for zero
+mean, hence w and the price of s_F. The terms |u - u_T|^2 and |e|_F^2 >= |u - u_F|_F^2 pay for negative potentials:
+
+    int p u^2 >= int p u_T^2 - |(1 - P)(p u_T)|^2 / z - (z + p_-) |u - u_T|^2 for any z > 0,
+
+the same on facets. What is left, Q[u] >= N[u_T, u_F], is a form on finitely many unknowns. The map u -> (u_T, u_F) is
+injective on subspaces where Q < 0, because N < 0 there: N has at least as many negative directions as Q on V. (The idea of
+keeping moments in cells and on facets is that of hybrid high-order methods, Di Pietro and Ern, CMAME 283 (2015) 1-21.)
+"""
+
+from dataclasses import dataclass, replace
+from functools import cached_property
+from math import factorial, pi
+
+import numpy as np
+from numpy.typing import NDArray
+from scipy.sparse import csc_matrix
+
+from service.bounds.condensed import Numbering, assemble
+from service.bounds.inertia import SingularPivot, factorise, smallest_eigenvalue_bound
+from service.bounds.rounding import UNIT, gamma
+from service.elements.jet import simplex_dimension
+from service.elements.moments import MOMENT_ERROR, MomentReference, moment_reference
+from service.elements.reference import magnitude
+from service.forms.form import Form, degree_of
+
+Array = NDArray[np.float64]
+
+POINCARE = {1: pi, 2: 3.8317059702075123, 3: pi}
+"""h / POINCARE[d] bounds the Poincare constant of a simplex with longest edge h; rounded down where used."""
+
+SHARE = 0.5
+"""The least part of the error's energy, after facets are paid for, that is spent on the cell terms."""
+
+LARGEST_NEED = 0.85
+"""The largest part of the error's energy that negative potentials may take."""
+
+LARGEST_RESERVE = 0.3
+"""The largest share of a positive form that may be set aside to pay for rounding."""
+
+
+class TooCoarse(ArithmeticError):
+    """The cells are too large for the form's negative potentials."""
+
+
+@dataclass(frozen=True)
+class Minorant:
+    """The matrix N of a form for facet polynomials of one ``order``.
+
+    Raises
+    ------
+    TooCoarse
+        On use, if negative potentials need more of the error's energy than there is.
+    """
+
+    form: Form
+    order: int
+
+    @property
+    def reference(self) -> MomentReference:
+        """Tensors on the unit simplex."""
+        return moment_reference(self.form.mesh.dimension, self.order, self.form.degree)
+
+    @cached_property
+    def numbering(self) -> Numbering:
+        """Facet polynomials of free facets are shared, cell polynomials a cell's own."""
+        mesh = self.form.mesh
+        free = ~self.form.dirichlet
+        per_facet = self.reference.trace.shape[1]
+        start = per_facet * (np.cumsum(free) - 1)
+        numbers = np.where(free[:, None], start[:, None] + np.arange(per_facet), -1)
+        return Numbering(
+            numbers[mesh.cell_facets].reshape(len(mesh.cells), -1), self.reference.stiffness.shape[-1]
+        )
+
+    @cached_property
+    def _owned(self) -> NDArray[np.bool_]:
+        """(nc, d+1) which facets a cell pays for: each facet belongs to one cell."""
+        mesh = self.form.mesh
+        return np.asarray(mesh.facet_cells[mesh.cell_facets, 0] == np.arange(len(mesh.cells))[:, None])
+
+    def local(self, bounded: bool = True) -> tuple[Array, Array]:
+        """N on each cell (nc, n, n), facet unknowns first, and a bound of the error of every entry."""
+        form, reference = self.form, self.reference
+        d = form.mesh.dimension
+        cells, n = len(form.mesh.cells), reference.stiffness.shape[-1]
+        metric = form.gradient_metric
+        modes = metric.shape[1]
+        stiffness = np.einsum("cmab,mabij->cij", metric, reference.stiffness[:modes], optimize=True)
+        normal = reference.normals @ metric  # (nc, m, d+1, d)
+        flux = np.einsum("cmfa,mfajl->cfjl", normal, reference.slopes[:modes], optimize=True).reshape(cells, -1, n)
+        trace = reference.trace.reshape(-1, n)
+
+        # With facet terms R has a trace of the facets' order, so that u - u_F sees e only.
+        lost = max(degree_of(d, modes), 1 if np.any(form.facet) else 0)
+        low = simplex_dimension(d, self.order + 1 - lost)
+        inner = stiffness[:, 1:low, 1:low]
+        right = np.concatenate([stiffness[:, 1:low], flux.swapaxes(1, 2)[:, 1:low]], axis=2)
+        # R = Y u_T + Z d with d = u_F - P u_T; any Y, Z are allowed, these are optimal up to rounding.
+        lifts = np.zeros((cells, n, n + trace.shape[0]))
+        lifts[:, 1:low] = np.linalg.solve(inner, right)
+        lifts[:, 0, 0] = 1.0
+
+        shares = self._shares()
+        potentials = self._potential(shares), self._facet_potential(shares)
+        local = compose(stiffness, flux, lifts, trace, shares, potentials)
+        if not bounded:
+            return (local + local.swapaxes(1, 2)) / 2, np.zeros_like(local)
+        # The same composition of absolute values bounds every entry's rounding and the error of the tensors.
+        bounds = compose(
+            np.einsum("cmab,mabij->cij", np.abs(metric), magnitude(reference.stiffness[:modes]), optimize=True),
+            np.einsum("cmfa,mfajl->cfjl", np.abs(normal), magnitude(reference.slopes[:modes]), optimize=True).reshape(
+                flux.shape
+            ),
+            np.abs(lifts),
+            magnitude(trace),
+            shares,
+            (np.abs(potentials[0]), np.abs(potentials[1])),
+            sign=-1.0,
+        )
+        return (local + local.swapaxes(1, 2)) / 2, (4 * MOMENT_ERROR + gamma(4 * n + modes * d * d + 24)) * bounds
+
+    def _shares(self) -> "Shares":
+        """How the energy of e is spent on each cell."""
+        form = self.form
+        d = form.mesh.dimension
+        if np.min(np.linalg.eigvalsh(form.diffusion_floor)) <= 0:
+            raise TooCoarse("the diffusion has no positive floor on some cell")
+        poincare = poincare_constants(form)
+        longest = poincare * POINCARE[d]
+        measure = form.jacobian / factorial(d)
+        through = (poincare**2 + 2 * longest * poincare / d) / measure
+        # Young's inequality with z = swing; the swing also bounds how far p goes below its mean.
+        young, facet_young = form.potential_swing, form.facet_swing
+        hunger = np.maximum(young - form.potential[:, 0], 0) + young
+        facet_hunger = (np.maximum(facet_young - form.facet[:, 0], 0) + facet_young) * form.facet_measure
+        facet_hunger = np.where(form.dirichlet, 0.0, facet_hunger)
+        cell_need = hunger * poincare**2 * (1 + 1e-9)
+        facet_need = through * np.sum(self._owned * facet_hunger[form.mesh.cell_facets], axis=1) * (1 + 1e-9)
+        if np.max(cell_need + facet_need) > LARGEST_NEED:
+            raise TooCoarse("the mesh is too coarse for the negative part of the form")
+        share = np.maximum(SHARE * (1 - facet_need), cell_need)
+        rest = (1 - facet_need - share) * (1 - 1e-9)
+        return Shares(share * form.jacobian / poincare**2, rest / ((d + 1) * through), young, facet_young)
+
+    def _potential(self, shares: "Shares") -> Array:
+        """int p u_T^2 - |(1 - P)(p u_T)|^2 / z on each cell (nc, n, n)."""
+        form, products = self.form, self.reference.products
+        n = products.shape[2]
+        if form.potential.shape[1] == 1:
+            return np.asarray((form.potential[:, 0] * form.jacobian)[:, None, None] * np.eye(n))
+        full = np.einsum("cm,mlj->clj", form.potential, products[: form.potential.shape[1]])
+        beyond = full[:, n:]
+        price = np.where(shares.young > 0, 1 / np.where(shares.young > 0, shares.young, 1), 0.0)
+        square = beyond.swapaxes(1, 2) @ beyond
+        return np.asarray(form.jacobian[:, None, None] * (full[:, :n] - price[:, None, None] * square))
+
+    def _facet_potential(self, shares: "Shares") -> Array:
+        """The same for facets, on the cells that own them: (nc, (d+1) f, (d+1) f)."""
+        form, products = self.form, self.reference.facet_products
+        own = products.shape[2]
+        full = np.einsum("fm,mlj->flj", form.facet, products[: form.facet.shape[1]])
+        beyond = full[:, own:]
+        price = np.where(shares.facet_young > 0, 1 / np.where(shares.facet_young > 0, shares.facet_young, 1), 0.0)
+        block = full[:, :own] - price[:, None, None] * (beyond.swapaxes(1, 2) @ beyond)
+        block = np.where(form.dirichlet[:, None, None], 0.0, block * form.facet_measure[:, None, None])
+        faces = form.mesh.dimension + 1
+        result = np.zeros((len(form.mesh.cells), faces, own, faces, own))
+        chosen = np.where(self._owned[:, :, None, None], block[form.mesh.cell_facets], 0.0)
+        for face in range(faces):
+            result[:, face, :, face] = chosen[:, face]
+        return result.reshape(len(result), faces * own, faces * own)
+
+    def condensed(self, bounded: bool = True) -> tuple[csc_matrix, float] | None:
+        """The facet matrix with the cell unknowns eliminated, and a bound of its error (none if not ``bounded``).
+
+        None where a cell's own block is not safely positive definite. For any W, with r = B - A W, the Schur
+        complement is C - B^T W - W^T B + W^T A W - r^T A^-1 r: no error of the inverse enters unnoticed.
+        """
+        local, wrong = self.local(bounded)
+        facets = self.numbering.skeleton.shape[1]
+        outer, mixed, inner = local[:, :facets, :facets], local[:, facets:, :facets], local[:, facets:, facets:]
+        doubt = norms(wrong[:, facets:, facets:])
+        least = np.linalg.eigvalsh(inner)[:, 0] - doubt - gamma(100 * inner.shape[1]) * norms(inner)
+        if not np.all(least > 0):
+            return None
+        weights = np.linalg.solve(inner, mixed)
+        residual = mixed - inner @ weights
+        back = mixed.swapaxes(1, 2) @ weights
+        schur = outer - back - back.swapaxes(1, 2) + weights.swapaxes(1, 2) @ inner @ weights
+        if not bounded:
+            return assemble(schur, self.numbering.skeleton, self.numbering.shared), 0.0
+        # Entry by entry: the errors of the blocks, and the rounding of these products.
+        wrong = wrong + gamma(8 * local.shape[1]) * np.abs(local)
+        far = np.abs(weights)
+        crossed = far.swapaxes(1, 2) @ wrong[:, facets:, :facets]
+        total = norms(wrong[:, :facets, :facets] + crossed + crossed.swapaxes(1, 2))
+        total += norms(far.swapaxes(1, 2) @ wrong[:, facets:, facets:] @ far)
+        missed = norms(np.abs(residual) + wrong[:, facets:, :facets] + wrong[:, facets:, facets:] @ far)
+        total += missed**2 / least
+        schur = (schur + schur.swapaxes(1, 2)) / 2
+        # Every facet belongs to two cells at most; the sum of two numbers rounds once more.
+        allowance = 2 * float(np.max(total)) + 2 * gamma(4) * float(np.max(norms(schur)))
+        return assemble(schur, self.numbering.skeleton, self.numbering.shared), allowance
+
+
+@dataclass(frozen=True)
+class Shares:
+    """What the energy of e pays for: factors (nc,) of |u_T - R|^2 in reference coordinates and of mean-square jumps."""
+
+    cell: Array
+    jump: Array
+    young: Array
+    facet_young: Array
+
+
+def compose(
+    stiffness: Array,
+    flux: Array,
+    lifts: Array,
+    trace: Array,
+    shares: Shares,
+    potentials: tuple[Array, Array],
+    sign: float = 1.0,
+) -> Array:
+    """N on each cell in the variables (u_F, u_T); with ``sign`` -1 and absolute values a bound of all that was added.
+
+    In the variables (u_T, d), d = u_F - P u_T: l(R) = u_T . K R + d . D R, u_T - R = (1 - Y) u_T - Z d.
+    """
+    n, rows = stiffness.shape[1], trace.shape[0]
+    data = np.concatenate([stiffness, flux], axis=1)
+    linear = data @ lifts
+    total = linear + linear.swapaxes(1, 2) - sign * (lifts.swapaxes(1, 2) @ stiffness @ lifts)
+    missed = -sign * lifts
+    missed[:, :, :n] += np.eye(n)
+    total += shares.cell[:, None, None] * (missed.swapaxes(1, 2) @ missed)
+    jumps = trace @ missed
+    jumps[:, :, n:] += np.eye(rows)
+    total += shares.jump[:, None, None] * (jumps.swapaxes(1, 2) @ jumps)
+    total[:, :n, :n] += potentials[0]
+    own, mixed, outer = total[:, :n, :n], total[:, :n, n:], total[:, n:, n:]
+    across = trace.T @ outer
+    back = mixed @ trace
+    inner = own - sign * (back + back.swapaxes(1, 2)) + across @ trace
+    mixed = mixed - sign * across
+    upper = np.concatenate([outer + potentials[1], mixed.swapaxes(1, 2)], axis=2)
+    return np.concatenate([upper, np.concatenate([mixed, inner], axis=2)], axis=1)
+
+
+def norms(matrices: Array) -> Array:
+    """(nc,) Frobenius norms."""
+    return np.asarray(np.linalg.norm(matrices, axis=(1, 2)))
+
+
+def poincare_constants(form: Form) -> Array:
+    """(nc,) c with |f| <= c |G^(1/2) grad f| for functions of zero mean on a cell, rounded up.
+
+    The metric of gradients as computed may be off by its error, hence the last factor.
+    """
+    mesh = form.mesh
+    corners = np.concatenate([np.zeros((len(mesh.cells), mesh.dimension, 1)), mesh.spans], axis=2)
+    first, second = np.triu_indices(mesh.dimension + 1, 1)
+    edges = corners[:, :, second] - corners[:, :, first]
+    stretched = np.linalg.solve(form.diffusion_floor, edges)
+    longest = np.max(np.einsum("cai,cai->ci", edges, stretched), axis=1)
+    return np.asarray(np.sqrt(longest) / POINCARE[mesh.dimension] * (1 + 1e-9 + 2 * form.metric_error))
+
+
+def reaches(form: Form) -> bool:
+    """Whether the cells are small enough for a minorant of the form."""
+    try:
+        Minorant(form, 1)._shares()
+    except TooCoarse:
+        return False
+    return True
+
+
+def count(form: Form, order: int) -> int | None:
+    """Negative eigenvalues of N as computed, unproved; None where the mesh is too coarse or a pivot vanishes."""
+    try:
+        condensed = Minorant(form, order).condensed(bounded=False)
+        return None if condensed is None else factorise(condensed[0]).negative
+    except (TooCoarse, SingularPivot):
+        return None
+
+
+def proves(form: Form, order: int, most: int, scale: float) -> bool:
+    """Whether every true form that ``form`` may stand for is proved to have at most ``most`` negative directions on V.
+
+    Q = (Q - h P) + h P with P[u] = int G grad u . grad u + scale int u^2 and a small h: N[Q - h P] + h N[P] is a minorant too.
+    The facet matrix of P is proved to be >= g I, and that of Q - h P is factorised up to an error E: |E| <= h g makes the
+    count of the factors a proof (Sylvester, Weyl).
+    """
+    if form.uncertainty > LARGEST_RESERVE:
+        return False
+    cells, facets = len(form.mesh.cells), len(form.mesh.facets)
+    form = form.lowered()
+    positive = replace(form, potential=np.full((cells, 1), scale), facet=np.zeros((facets, 1)))
+    try:
+        above = Minorant(positive, order).condensed()
+        if above is None:
+            return False
+        ground = smallest_eigenvalue_bound(above[0]) - above[1]
+        reserve = 4 * above[1] / ground if ground > 0 else 1.0
+        # A first guess of what rounding takes, then, if that was too little, what it took.
+        for _ in range(2):
+            if reserve > LARGEST_RESERVE:
+                return False
+            below = Minorant(form.plus(positive, -reserve), order).condensed()
+            if below is None:
+                return False
+            factors = factorise(below[0])
+            if factors.negative > most:
+                return False
+            taken = factors.residual + below[1]
+            if taken <= 0.99 * reserve * ground:
+                return True
+            reserve = 1.5 * taken / ground
+    except (TooCoarse, SingularPivot):
+        return False
+    return False

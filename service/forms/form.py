@@ -1,0 +1,235 @@
+"""Quadratic forms whose coefficients are polynomials on each cell, and pairs of them.
+
+One question carries every constant: what are the smallest ratios A[u]/B[u] over a space of functions?
+"""
+
+from dataclasses import dataclass, replace
+from functools import cached_property, lru_cache
+
+import numpy as np
+from numpy.typing import NDArray
+
+from service.bounds.rounding import UNIT
+from service.elements.jet import simplex_dimension, simplex_polynomials
+from service.elements.reference import raw_orthonormal, scalar_norms
+from service.elements.scalar import barycentric, subsimplices
+from service.meshing.mesh import Mesh
+
+Array = NDArray[np.float64]
+
+
+@dataclass(frozen=True)
+class Form:
+    """Q[u] = int G grad u . grad u + int p u^2 + sum_F int_F r u^2 on functions that vanish on the Dirichlet part.
+
+    Coefficients are given by modes: factors of the orthogonal polynomials of the unit simplex (of the facet for r), scaled
+    so that mode 0 is the constant 1 and its factor the mean.
+
+    dirichlet : (nf,) bool, facets on which functions vanish.
+    diffusion : (nc, m, d, d) symmetric matrices G.
+    potential : (nc, m) p.
+    facet : (nf, mf) r, on inner facets too.
+    """
+
+    mesh: Mesh
+    dirichlet: NDArray[np.bool_]
+    diffusion: Array
+    potential: Array
+    facet: Array
+
+    @cached_property
+    def degree(self) -> int:
+        """Degree of the coefficients as polynomials."""
+        d = self.mesh.dimension
+        volume = degree_of(d, max(self.diffusion.shape[1], self.potential.shape[1]))
+        return max(volume, degree_of(d - 1, self.facet.shape[1]) if d > 1 else 0)
+
+    @cached_property
+    def jacobian(self) -> Array:
+        """(nc,) absolute determinant of the map from the unit simplex."""
+        return np.asarray(np.abs(np.linalg.det(self.mesh.spans)))
+
+    @cached_property
+    def gradient_metric(self) -> Array:
+        """(nc, m, d, d): int_T G grad u . grad v = sum over modes and directions of int psi_m d_a u d_b v."""
+        inverse = np.linalg.inv(self.mesh.spans)[:, None]
+        metric = inverse @ self.diffusion @ inverse.swapaxes(2, 3) * self.jacobian[:, None, None, None]
+        return np.asarray((metric + metric.swapaxes(2, 3)) / 2)
+
+    @cached_property
+    def facet_measure(self) -> Array:
+        """(nf,) length (area) of each facet."""
+        mesh = self.mesh
+        corners = np.concatenate([np.zeros((len(mesh.cells), mesh.dimension, 1)), mesh.spans], axis=2)
+        measure = np.zeros(len(mesh.facets))
+        factorial = float(np.prod(np.arange(1, mesh.dimension)))
+        for opposite, vertices in enumerate(subsimplices(mesh.dimension, mesh.dimension)):
+            sides = corners[:, :, vertices[1:]] - corners[:, :, vertices[:1]]
+            gram = np.linalg.det(sides.swapaxes(1, 2) @ sides)
+            measure[mesh.cell_facets[:, opposite]] = np.sqrt(np.abs(gram)) / factorial
+        return measure
+
+    @cached_property
+    def diffusion_floor(self) -> Array:
+        """(nc, d, d) constant matrices with G >= floor on the cell."""
+        d = self.mesh.dimension
+        loss = np.linalg.norm(self.diffusion[:, 1:], axis=(2, 3)) @ suprema(d, self.diffusion.shape[1])[1:]
+        return self.diffusion[:, 0] - loss[:, None, None] * np.eye(d)
+
+    @cached_property
+    def potential_swing(self) -> Array:
+        """(nc,) bound of |p - mean| on the cell."""
+        return np.abs(self.potential[:, 1:]) @ suprema(self.mesh.dimension, self.potential.shape[1])[1:]
+
+    @cached_property
+    def facet_swing(self) -> Array:
+        """(nf,) bound of |r - mean| on the facet."""
+        return np.abs(self.facet[:, 1:]) @ suprema(self.mesh.dimension - 1, self.facet.shape[1])[1:]
+
+    @cached_property
+    def metric_error(self) -> float:
+        """Bound e with (1-e) M <= M' <= (1+e) M for the metrics: M' exact for ``spans`` as given, M as computed.
+
+        Entries of the d x d products and inverses have errors of at most c d u times the products of norms,
+        against smallest eigenvalues that are cond(J)^2 below the largest.
+        """
+        spans = self.mesh.spans
+        condition = np.linalg.norm(spans, axis=(1, 2)) * np.linalg.norm(np.linalg.inv(spans), axis=(1, 2))
+        return float(32 * self.mesh.dimension**2 * UNIT * np.max(condition) ** 2)
+
+    @cached_property
+    def uncertainty(self) -> float:
+        """Bound e: each part of the true form (gradients, potential on a cell, a facet) is that of these arrays times a
+        factor within 1 - e and 1 + e.
+
+        If the true Jacobian is (I + F) J, gradients change by (I + F)^-T, volumes by det(I + F) and facets in between:
+        factors within (1 +- |F|)^d / (1 -+ |F|)^2; then the rounding of the metrics and of sums of forms.
+        """
+        return 1.1 * (self.mesh.dimension + 2) * self.mesh.shape_error + self.metric_error
+
+    def lowered(self) -> "Form":
+        """A form below every true form that these arrays may stand for."""
+        e = self.uncertainty
+        potential, facet = self.potential.copy(), self.facet.copy()
+        potential[:, 0] -= e * (np.abs(potential[:, 0]) + self.potential_swing)
+        facet[:, 0] -= e * (np.abs(facet[:, 0]) + self.facet_swing)
+        diffusion = self.diffusion.copy()
+        swing = np.linalg.norm(diffusion, axis=(2, 3)) @ suprema(self.mesh.dimension, diffusion.shape[1])
+        diffusion[:, 0] -= (e * swing)[:, None, None] * np.eye(self.mesh.dimension)
+        return replace(self, diffusion=diffusion, potential=potential, facet=facet)
+
+    def absolute(self) -> "Form":
+        """A constant form that bounds the sum of the absolute values of this form's parts."""
+        swing = np.linalg.norm(self.diffusion, axis=(2, 3)) @ suprema(self.mesh.dimension, self.diffusion.shape[1])
+        return replace(
+            self,
+            diffusion=(swing[:, None, None] * np.eye(self.mesh.dimension))[:, None],
+            potential=(np.abs(self.potential[:, 0]) + self.potential_swing)[:, None],
+            facet=(np.abs(self.facet[:, 0]) + self.facet_swing)[:, None],
+        )
+
+    @property
+    def steady(self) -> bool:
+        """Whether coefficients are constant on each cell and there are no facet terms."""
+        return self.diffusion.shape[1] == self.potential.shape[1] == 1 and not np.any(self.facet)
+
+    def plus(self, other: "Form", factor: float) -> "Form":
+        """This form plus ``factor`` times another on the same mesh."""
+        return replace(
+            self,
+            diffusion=combined(self.diffusion, other.diffusion, factor),
+            potential=combined(self.potential, other.potential, factor),
+            facet=combined(self.facet, other.facet, factor),
+        )
+
+
+@dataclass(frozen=True)
+class Pencil:
+    """Two forms A and B on the same mesh and space, B >= 0; the ratios are those of A[u]/B[u]."""
+
+    energy: Form
+    weight: Form
+
+    @property
+    def mesh(self) -> Mesh:
+        """The cells."""
+        return self.energy.mesh
+
+    def at(self, t: float) -> Form:
+        """A - t B."""
+        return self.energy.plus(self.weight, -t)
+
+    def shifted(self, shift: float) -> "Pencil":
+        """(A + shift B, B): every ratio grows by ``shift``."""
+        return Pencil(self.energy.plus(self.weight, shift), self.weight)
+
+    @cached_property
+    def ratio_error(self) -> float:
+        """Bound e: where all parts of A are >= 0, a true ratio is one of these arrays times a factor within 1 +- e."""
+        return 2.1 * self.energy.uncertainty
+
+
+def combined(first: Array, second: Array, factor: float) -> Array:
+    """Sum of mode arrays of different lengths."""
+    modes = max(first.shape[1], second.shape[1])
+    result = np.zeros((len(first), modes, *first.shape[2:]))
+    result[:, : first.shape[1]] += first
+    result[:, : second.shape[1]] += factor * second
+    return result
+
+
+def degree_of(dimension: int, modes: int) -> int:
+    """The degree whose polynomials number ``modes`` at least."""
+    degree = 0
+    while simplex_dimension(dimension, degree) < modes:
+        degree += 1
+    return degree
+
+
+@lru_cache(maxsize=64)
+def suprema(dimension: int, modes: int) -> Array:
+    """Bounds of the largest absolute values of the coefficient modes on the unit simplex.
+
+    A polynomial lies within its Bernstein coefficients (Farouki, Comput. Aided Geom. Design 29 (2012)).
+    """
+    if dimension == 0 or modes == 1:
+        return np.ones(1)
+    degree = degree_of(dimension, modes)
+    grid = np.array([g for g in np.ndindex(*(degree + 1,) * dimension) if sum(g) <= degree]).T / max(degree, 1)
+    lam = np.array([jet[0] for jet in barycentric(grid)])
+    powers = np.rint(lam * degree).astype(int).T
+    factorial = np.concatenate([[1.0], np.cumprod(np.arange(1.0, degree + 1))])
+    bernstein = np.array(
+        [factorial[degree] / np.prod(factorial[power]) * np.prod(lam.T**power, axis=1) for power in powers]
+    )
+    values = coefficient_modes(dimension, modes, grid)
+    return np.asarray(np.max(np.abs(np.linalg.solve(bernstein.T, values.T)), axis=0) * (1 + 1e-9))
+
+
+def coefficient_modes(dimension: int, modes: int, points: Array) -> Array:
+    """Values (m, n) of the coefficient modes at points (d, n) of the unit simplex."""
+    degree = degree_of(dimension, modes)
+    norms = scalar_norms(dimension, degree)
+    return np.asarray(raw_orthonormal(dimension, degree, points, norms)[:modes, 0] * norms[0])
+
+
+def constant_form(
+    mesh: Mesh,
+    dirichlet: NDArray[np.bool_],
+    diffusion: float | Array = 0.0,
+    potential: float | Array = 0.0,
+    facet: float | Array = 0.0,
+) -> Form:
+    """A form with coefficients constant on each cell and facet; scalars, one matrix, or arrays (nc, d, d), (nc,), (nf,)."""
+    cells, d = len(mesh.cells), mesh.dimension
+    matrix = np.asarray(diffusion, dtype=float)
+    if matrix.ndim < 3:
+        matrix = np.broadcast_to(matrix * np.eye(d) if matrix.ndim == 0 else matrix, (cells, d, d))
+    volume = np.broadcast_to(np.asarray(potential, dtype=float), (cells,))
+    surface = np.broadcast_to(np.asarray(facet, dtype=float), (len(mesh.facets),))
+    return Form(mesh, dirichlet, matrix[:, None], volume[:, None], surface[:, None])
+
+
+def laplace(mesh: Mesh, dirichlet: NDArray[np.bool_]) -> Pencil:
+    """int |grad u|^2 against int u^2."""
+    return Pencil(constant_form(mesh, dirichlet, diffusion=1.0), constant_form(mesh, dirichlet, potential=1.0))
