@@ -1,6 +1,6 @@
 """A plane domain with straight edges and named boundary parts: what a problem document describes."""
 
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import Literal
 
 import numpy as np
@@ -18,14 +18,39 @@ class BoundaryPart:
 
 
 @dataclass(frozen=True)
+class Region:
+    """A named piece of the plane, in which coefficients differ from those elsewhere.
+
+    name : as in the problem document.
+    rings : outer ring and holes, (k, 2) vertices each in the user's length unit, not closed; the region
+        may reach beyond the domain.
+    """
+
+    name: str
+    rings: tuple[NDArray[np.float64], ...]
+
+    def __eq__(self, other: object) -> bool:
+        """Whether name and rings are equal, arrays element by element."""
+        if not isinstance(other, Region):
+            return NotImplemented
+        return (self.name, len(self.rings)) == (other.name, len(other.rings)) and all(
+            np.array_equal(mine, theirs) for mine, theirs in zip(self.rings, other.rings, strict=True)
+        )
+
+
+def _no_interfaces() -> NDArray[np.int64]:
+    return np.empty((0, 2), dtype=np.int64)
+
+
+@dataclass(frozen=True)
 class PlaneDomain:
     """A bounded open set whose boundary consists of straight edges.
 
     Edges meet at their ends only. Two loops may touch in single vertices; such a vertex is one point,
     and the edges of both loops use it.
 
-    points : (n, 2) different vertices in the user's length unit, ends of boundary selectors included;
-        vertices of the shape keep every bit, also those at straight angles.
+    points : (n, 2) different vertices in the user's length unit, ends of boundary selectors and of
+        interfaces included; vertices of the shape keep every bit, also those at straight angles.
     edges : (m, 2) indices into ``points``; the domain lies to the left of each edge. The edges of
         one loop follow one another; outer loops run counter-clockwise, holes clockwise. Every loop is
         a simple polygon.
@@ -34,6 +59,14 @@ class PlaneDomain:
     part : (m,) index into ``parts`` for each edge.
     parts : the named boundary parts, in the order of the problem document.
     components : number of connected pieces of the open set (the numerics demand 1).
+    interfaces : (k, 2) indices into ``points``: straight segments inside the domain on which coefficients
+        may jump. Segments and edges meet at common points only. A point that no edge uses is inside the
+        domain.
+    regions : the named regions. The part of their boundaries that is inside the domain consists of
+        interfaces.
+    hosts : (n, 2) the two points between which each point lies: for a vertex that divides a straight edge
+        the ends of that edge, for every other point itself twice. Such a vertex is A + t (B - A) for the t nearest
+        to its coordinates, on the edge exactly and not only to the last bit. Empty: no such vertices.
     """
 
     points: NDArray[np.float64]
@@ -42,12 +75,16 @@ class PlaneDomain:
     part: NDArray[np.int64]
     parts: tuple[BoundaryPart, ...]
     components: int = 1
+    interfaces: NDArray[np.int64] = field(default_factory=_no_interfaces)
+    regions: tuple[Region, ...] = ()
+    hosts: NDArray[np.int64] = field(default_factory=_no_interfaces)
 
     def __eq__(self, other: object) -> bool:
         """Whether all members are equal, arrays element by element."""
         if not isinstance(other, PlaneDomain):
             return NotImplemented
-        arrays = ("points", "edges", "loops", "part")
-        return (self.parts, self.components) == (other.parts, other.components) and all(
+        arrays = ("points", "edges", "loops", "part", "interfaces", "hosts")
+        rest = ("parts", "components", "regions")
+        return all(getattr(self, name) == getattr(other, name) for name in rest) and all(
             np.array_equal(getattr(self, name), getattr(other, name)) for name in arrays
         )
