@@ -11,7 +11,7 @@ from service.meshing.corners import interior_angles, layer_counts, singular_expo
 from service.meshing.fill import fill, meshing_failed
 from service.meshing.grade import grade
 from service.meshing.mesh import Mesh
-from service.meshing.normalise import normalise
+from service.meshing.normalise import normalise, on_hosts
 from service.meshing.scales import local_scales
 from service.meshing.separate import separate
 from service.meshing.sizing import SizeFunction, Subdivision, size_function, subdivide, vertex_sizes
@@ -56,7 +56,7 @@ def mesh_domain(domain: PlaneDomain, *, size: float, target: float, max_cells: i
     if not all(np.array_equal(np.sort(end), everyone) for end in domain.edges.T):
         raise ValueError("every point must start one edge and end one")
     frame = normalise(domain.points)
-    points, edges = frame.points, domain.edges
+    points, edges = on_hosts(frame.points, domain.hosts), domain.edges
     dirichlet = np.array([part.condition == "dirichlet" for part in domain.parts])[domain.part]
     # The given points, scaled only: their differences are as exact as they can be.
     angles = interior_angles(domain.points / frame.unit, edges)
@@ -68,7 +68,9 @@ def mesh_domain(domain: PlaneDomain, *, size: float, target: float, max_cells: i
     scales = local_scales(points, edges, dirichlet)
     candidates = layer_counts(exponents, _REACH * wanted / scales, target) > 0
     least = np.where(candidates[edges].all(axis=1), 2, 1).astype(np.int64)
-    outline = _Outline(points, edges, domain.loops, domain.part, wanted, scales, exponents, least)
+    outline = _Outline(
+        points, edges, domain.loops, domain.part, wanted, scales, exponents, least, domain.hosts
+    )
     narrow, narrow_sizes = channel_sizes(points, edges, wanted, size, max_cells // 4)
     sizes = size_function(np.vstack([points, narrow]), np.concatenate([wanted, narrow_sizes]), size)
     try:
@@ -89,6 +91,7 @@ class _Outline:
     scales : (n,) distance over which the solution changes there.
     exponents : (n,) smallest singular exponent.
     least : (m,) least number of pieces of each edge.
+    hosts : as in ``PlaneDomain``.
     """
 
     points: NDArray[np.float64]
@@ -99,6 +102,7 @@ class _Outline:
     scales: NDArray[np.float64]
     exponents: NDArray[np.float64]
     least: NDArray[np.int64]
+    hosts: NDArray[np.int64]
 
 
 def _triangulate(
@@ -118,7 +122,7 @@ def _triangulate(
     layers = np.concatenate([layers, np.zeros(len(every) - len(layers), dtype=np.int64)])
     _check_count(len(triangles) + 2 * int(layers[triangles].sum()), max_cells)
 
-    spans, error = base_spans(every, triangles, displacements(cut, points, edges, len(every)))
+    spans, error = base_spans(every, triangles, displacements(cut, points, edges, len(every), outline.hosts))
     base = Triangulation(every, triangles, spans, error, cut.edges, outline.part[cut.parent])
     _check_cover(base, points, edges, outline.loops)
     return grade(base, layers)
@@ -146,16 +150,22 @@ def _longest_at(points: NDArray[np.float64], triangles: NDArray[np.int64]) -> ND
 
 
 def displacements(
-    cut: Subdivision, points: NDArray[np.float64], edges: NDArray[np.int64], count: int
+    cut: Subdivision,
+    points: NDArray[np.float64],
+    edges: NDArray[np.int64],
+    count: int,
+    hosts: NDArray[np.int64],
 ) -> NDArray[np.float64]:
     """Bound of the distance of each base vertex to its true place, for each coordinate, (nv, 2).
 
     Coordinates are non-negative. A vertex of the polygon is off by one rounding, u times its
     coordinate. A point A + t(B − A) inside an edge inherits at most that of the larger end and adds
-    three roundings of numbers no larger: below 5u max(A, B). Inner vertices are where they are.
+    three roundings of numbers no larger: 5u max(A, B), also for vertices placed on their ``hosts``.
+    Inner vertices are where they are.
     """
-    corners = 2 * UNIT_ROUNDOFF * points
-    inner = 5 * UNIT_ROUNDOFF * points[edges[cut.host]].max(axis=1)
+    far = points[hosts].max(axis=1) if len(hosts) else points
+    corners = np.where(far > points, 5, 2) * UNIT_ROUNDOFF * far
+    inner = corners[edges[cut.host]].max(axis=1) + 3 * UNIT_ROUNDOFF * points[edges[cut.host]].max(axis=1)
     rest = np.zeros((count - len(cut.points), 2))
     return np.vstack([corners, inner, rest])
 

@@ -148,6 +148,11 @@ def _warning(pieces: Split, free: Mask, name: str, unit: str) -> str:
 def _domain(pieces: Split, owner: Indices, parts: tuple[BoundaryPart, ...], components: int) -> PlaneDomain:
     """The domain, its vertices numbered in the order in which the loops pass them first."""
     used, start, end = renumber(pieces.start, pieces.end)
+    label = np.argsort(used)  # every vertex is in use
+    given = len(pieces.points) - len(pieces.hosts)
+    hosts = np.stack([used, used], axis=1)
+    added = used >= given
+    hosts[added] = pieces.hosts[used[added] - given]
     return PlaneDomain(
         points=pieces.points[used],
         edges=np.stack([start, end], axis=1),
@@ -155,4 +160,5 @@ def _domain(pieces: Split, owner: Indices, parts: tuple[BoundaryPart, ...], comp
         part=owner,
         parts=parts,
         components=components,
+        hosts=label[hosts],
     )

@@ -17,6 +17,7 @@ class Split:
     points : (n, 2) vertices in the user's length unit; those of the outline come first, unchanged.
     start, end : (m,) vertex numbers of the sub-edges, in the order of the outline.
     loop : (m,) number of the loop.
+    hosts : (a, 2) the ends of the edge of the outline on which each added vertex lies, the last ``a`` ones.
     begin, stop : (k,) for every span of every selection the sub-edge it begins with and the one after its
         last.
     bounds : (s + 1,) the spans of selection i are those from bounds[i] to bounds[i + 1].
@@ -26,6 +27,7 @@ class Split:
     start: Indices
     end: Indices
     loop: Indices
+    hosts: Indices
     begin: Indices
     stop: Indices
     bounds: Indices
@@ -70,6 +72,7 @@ def split(outline: Outline, edges: Edges, selections: list[Spans]) -> Split:
         start=cut.start,
         end=cut.end,
         loop=outline.loop[cut.parent],
+        hosts=np.stack([outline.start[owner[first]], outline.end[owner[first]]], axis=1),
         begin=node[: len(edge)],
         stop=node[len(edge) :],
         bounds=np.cumsum([0, *(len(spans.edge) for spans in selections)]),

@@ -169,7 +169,7 @@ def test_corners_are_off_by_no_more_than_their_displacement():
     frame = normalise(shape.points)
     sizes = size_function(frame.points, np.full(3, 0.3), 0.3)
     cut = subdivide(frame.points, shape.edges, sizes, np.full(3, 2))
-    allowed = displacements(cut, frame.points, shape.edges, len(cut.points) + 1)
+    allowed = displacements(cut, frame.points, shape.edges, len(cut.points) + 1, shape.hosts)
     assert (allowed[-1] == 0).all()
     true = (rational(shape.points) - rational(frame.origin)) / Fraction(frame.unit)
     error = np.abs(true - rational(frame.points)).astype(np.float64)
