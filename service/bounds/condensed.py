@@ -19,7 +19,7 @@ def assemble(local: Array, numbers: NDArray[np.int64], size: int) -> csc_matrix:
     return csc_matrix(coo_matrix((local[keep], (rows[keep], columns[keep])), shape=(size, size)))
 
 
-class NotPositive(ArithmeticError):
+class NotPositiveError(ArithmeticError):
     """A matrix that should be positive definite is not."""
 
 
@@ -28,15 +28,15 @@ def positive_solver(matrix: csc_matrix) -> SuperLU:
 
     Raises
     ------
-    NotPositive
+    NotPositiveError
         If a pivot is not positive.
     """
     try:
         factor = splu(matrix, permc_spec="MMD_AT_PLUS_A", diag_pivot_thresh=0.0, options={"SymmetricMode": True})
     except RuntimeError as error:
-        raise NotPositive(str(error)) from error
+        raise NotPositiveError(str(error)) from error
     if not np.all(factor.U.diagonal() > 0):
-        raise NotPositive("negative pivot")
+        raise NotPositiveError("negative pivot")
     return factor
 
 
@@ -104,9 +104,9 @@ class Condensed:
     def build(local: Array, numbering: Numbering) -> "Condensed":
         """Eliminates the bubbles of each local matrix (nc, n, n) and factorises what remains."""
         width = numbering.skeleton.shape[1]
-        inner: Array = np.linalg.inv(local[:, width:, width:])
-        coupling = inner @ local[:, width:, :width]
-        schur = local[:, :width, :width] - local[:, :width, width:] @ coupling
+        inner = np.asarray(np.linalg.inv(local[:, width:, width:]), dtype=float)
+        coupling: Array = inner @ local[:, width:, :width]
+        schur: Array = local[:, :width, :width] - local[:, :width, width:] @ coupling
         factor = positive_solver(assemble(schur, numbering.skeleton, numbering.shared))
         return Condensed(numbering, factor, inner, coupling)
 

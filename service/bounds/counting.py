@@ -1,22 +1,31 @@
 """How many negative directions a quadratic form has: a nonconforming minorant of any order, counted and proved.
 
-For u in V keep, on each cell, its L2 projection u_T on polynomials of order k + 1 and, on each facet, the projection u_F of its
-trace on order k. They determine l(w) = int G grad u . grad w for every polynomial w of order j = k + 1 - q, where G has degree q
+For u in V keep, on each cell, its L2 projection u_T on polynomials of order k + 1 and, on each facet, the
+projection u_F of its
+trace on order k. They determine l(w) = int G grad u . grad w for every polynomial w of order j = k + 1 - q, where G
+has degree q
 (integrate by parts). Hence, for any R of order j that depends linearly on (u_T, u_F), and e = u - R of zero mean,
 
     int G grad u . grad u = 2 l(R) - int G grad R . grad R + int G grad e . grad e,
-    int G grad e . grad e >= a (|u_T - R|^2 + |u - u_T|^2) / c^2 + b w sum_F mean_F (u_F - P_F R)^2 + sum_F s_F |e|_F^2.
+    int G grad e . grad e >= a (|u_T - R|^2 + |u - u_T|^2) / c^2 + b w sum_F mean_F (u_F - P_F R)^2 + sum_F s_F
+    |e|_F^2.
 
-c is the Poincare constant of the cell in the metric of the floor of G: h / j_(1,1) on triangles (Laugesen and Siudeja,
-J. Differential Equations 249 (2010) 118-135), h / pi on any simplex (Payne and Weinberger 1960; Bebendorf 2003), h the longest
-edge. The trace identity gives mean_F f^2 = mean_T (f^2 + (2/d) f (x - P) . grad f) <= (c^2 + 2 h c / d) mean_T |grad f|^2 for zero
+c is the Poincare constant of the cell in the metric of the floor of G: h / j_(1,1) on triangles (Laugesen and
+Siudeja,
+J. Differential Equations 249 (2010) 118-135), h / pi on any simplex (Payne and Weinberger 1960; Bebendorf 2003), h
+the longest
+edge. The trace identity gives mean_F f^2 = mean_T (f^2 + (2/d) f (x - P) . grad f) <= (c^2 + 2 h c / d) mean_T
+|grad f|^2 for zero
 mean, hence w and the price of s_F. The terms |u - u_T|^2 and |e|_F^2 >= |u - u_F|_F^2 pay for negative potentials:
 
     int p u^2 >= int p u_T^2 - |(1 - P)(p u_T)|^2 / z - (z + p_-) |u - u_T|^2 for any z > 0,
 
-the same on facets. What is left, Q[u] >= N[u_T, u_F], is a form on finitely many unknowns. The map u -> (u_T, u_F) is
-injective on subspaces where Q < 0, because N < 0 there: N has at least as many negative directions as Q on V. (The idea of
-keeping moments in cells and on facets is that of hybrid high-order methods, Di Pietro and Ern, CMAME 283 (2015) 1-21.)
+the same on facets. What is left, Q[u] >= N[u_T, u_F], is a form on finitely many unknowns. The map u -> (u_T, u_F)
+is
+injective on subspaces where Q < 0, because N < 0 there: N has at least as many negative directions as Q on V. (The
+idea of
+keeping moments in cells and on facets is that of hybrid high-order methods, Di Pietro and Ern, CMAME 283 (2015)
+1-21.)
 """
 
 from dataclasses import dataclass, replace
@@ -28,8 +37,8 @@ from numpy.typing import NDArray
 from scipy.sparse import csc_matrix
 
 from service.bounds.condensed import Numbering, assemble
-from service.bounds.inertia import SingularPivot, factorise, smallest_eigenvalue_bound
-from service.bounds.rounding import UNIT, gamma
+from service.bounds.inertia import SingularPivotError, factorise, smallest_eigenvalue_bound
+from service.bounds.rounding import gamma
 from service.elements.jet import simplex_dimension
 from service.elements.moments import MOMENT_ERROR, MomentReference, moment_reference
 from service.elements.reference import magnitude
@@ -50,7 +59,7 @@ LARGEST_RESERVE = 0.3
 """The largest share of a positive form that may be set aside to pay for rounding."""
 
 
-class TooCoarse(ArithmeticError):
+class TooCoarseError(ArithmeticError):
     """The cells are too large for the form's negative potentials."""
 
 
@@ -60,7 +69,7 @@ class Minorant:
 
     Raises
     ------
-    TooCoarse
+    TooCoarseError
         On use, if negative potentials need more of the error's energy than there is.
     """
 
@@ -80,9 +89,7 @@ class Minorant:
         per_facet = self.reference.trace.shape[1]
         start = per_facet * (np.cumsum(free) - 1)
         numbers = np.where(free[:, None], start[:, None] + np.arange(per_facet), -1)
-        return Numbering(
-            numbers[mesh.cell_facets].reshape(len(mesh.cells), -1), self.reference.stiffness.shape[-1]
-        )
+        return Numbering(numbers[mesh.cell_facets].reshape(len(mesh.cells), -1), self.reference.stiffness.shape[-1])
 
     @cached_property
     def _owned(self) -> NDArray[np.bool_]:
@@ -136,7 +143,7 @@ class Minorant:
         form = self.form
         d = form.mesh.dimension
         if np.min(np.linalg.eigvalsh(form.diffusion_floor)) <= 0:
-            raise TooCoarse("the diffusion has no positive floor on some cell")
+            raise TooCoarseError("the diffusion has no positive floor on some cell")
         poincare = poincare_constants(form)
         longest = poincare * POINCARE[d]
         measure = form.jacobian / factorial(d)
@@ -149,7 +156,7 @@ class Minorant:
         cell_need = hunger * poincare**2 * (1 + 1e-9)
         facet_need = through * np.sum(self._owned * facet_hunger[form.mesh.cell_facets], axis=1) * (1 + 1e-9)
         if np.max(cell_need + facet_need) > LARGEST_NEED:
-            raise TooCoarse("the mesh is too coarse for the negative part of the form")
+            raise TooCoarseError("the mesh is too coarse for the negative part of the form")
         share = np.maximum(SHARE * (1 - facet_need), cell_need)
         rest = (1 - facet_need - share) * (1 - 1e-9)
         return Shares(share * form.jacobian / poincare**2, rest / ((d + 1) * through), young, facet_young)
@@ -234,7 +241,8 @@ def compose(
     potentials: tuple[Array, Array],
     sign: float = 1.0,
 ) -> Array:
-    """N on each cell in the variables (u_F, u_T); with ``sign`` -1 and absolute values a bound of all that was added.
+    """N on each cell in the variables (u_F, u_T); with ``sign`` -1 and absolute values a bound of all that was
+    added.
 
     In the variables (u_T, d), d = u_F - P u_T: l(R) = u_T . K R + d . D R, u_T - R = (1 - Y) u_T - Z d.
     """
@@ -281,7 +289,7 @@ def reaches(form: Form) -> bool:
     """Whether the cells are small enough for a minorant of the form."""
     try:
         Minorant(form, 1)._shares()
-    except TooCoarse:
+    except TooCoarseError:
         return False
     return True
 
@@ -291,15 +299,18 @@ def count(form: Form, order: int) -> int | None:
     try:
         condensed = Minorant(form, order).condensed(bounded=False)
         return None if condensed is None else factorise(condensed[0]).negative
-    except (TooCoarse, SingularPivot):
+    except (TooCoarseError, SingularPivotError):
         return None
 
 
 def proves(form: Form, order: int, most: int, scale: float) -> bool:
-    """Whether every true form that ``form`` may stand for is proved to have at most ``most`` negative directions on V.
+    """Whether every true form that ``form`` may stand for is proved to have at most ``most`` negative directions on
+    V.
 
-    Q = (Q - h P) + h P with P[u] = int G grad u . grad u + scale int u^2 and a small h: N[Q - h P] + h N[P] is a minorant too.
-    The facet matrix of P is proved to be >= g I, and that of Q - h P is factorised up to an error E: |E| <= h g makes the
+    Q = (Q - h P) + h P with P[u] = int G grad u . grad u + scale int u^2 and a small h: N[Q - h P] + h N[P] is a
+    minorant too.
+    The facet matrix of P is proved to be >= g I, and that of Q - h P is factorised up to an error E: |E| <= h g
+    makes the
     count of the factors a proof (Sylvester, Weyl).
     """
     if form.uncertainty > LARGEST_RESERVE:
@@ -327,6 +338,6 @@ def proves(form: Form, order: int, most: int, scale: float) -> bool:
             if taken <= 0.99 * reserve * ground:
                 return True
             reserve = 1.5 * taken / ground
-    except (TooCoarse, SingularPivot):
+    except (TooCoarseError, SingularPivotError):
         return False
     return False

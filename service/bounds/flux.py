@@ -1,9 +1,13 @@
 """Fluxes with prescribed divergence and least energy: the dual half of every sharp bound.
 
-Given functions h_i, find Raviart-Thomas fields s_i with div s_i = h_i and s_i . n = 0 off the Dirichlet part that minimise
-int G^-1 s . s. Inside a cell the divergence fixes the source bubbles at once and the divergence-free bubbles are eliminated;
-between cells, the multiplier of normal continuity solves one sparse symmetric positive definite system (hybridisation; Arnold and
-Brezzi, RAIRO 19 (1985) 7-32). Whatever rounding leaves of the divergence is evaluated afterwards, never assumed zero.
+Given functions h_i, find Raviart-Thomas fields s_i with div s_i = h_i and s_i . n = 0 off the Dirichlet part that
+minimise
+int G^-1 s . s. Inside a cell the divergence fixes the source bubbles at once and the divergence-free bubbles are
+eliminated;
+between cells, the multiplier of normal continuity solves one sparse symmetric positive definite system
+(hybridisation; Arnold and
+Brezzi, RAIRO 19 (1985) 7-32). Whatever rounding leaves of the divergence is evaluated afterwards, never assumed
+zero.
 """
 
 from dataclasses import dataclass
@@ -68,7 +72,8 @@ class FluxSpace:
     def equilibrate(self, sources: Array) -> Array:
         """Fields (nc, n, m) whose divergences are the given polynomials, up to rounding.
 
-        sources : (nc, q, m) moments of h_i times the Jacobian against the orthonormal polynomials of the unit simplex.
+        sources : (nc, q, m) moments of h_i times the Jacobian against the orthonormal polynomials of the unit
+        simplex.
         """
         mesh, reference = self.form.mesh, self.reference
         cells, columns = len(mesh.cells), sources.shape[2]

@@ -12,7 +12,7 @@ from service.bounds.rounding import gamma
 Array = NDArray[np.float64]
 
 
-class SingularPivot(ArithmeticError):
+class SingularPivotError(ArithmeticError):
     """The factorisation met a zero pivot: the matrix must be shifted a little."""
 
 
@@ -37,18 +37,18 @@ def factorise(matrix: csc_matrix) -> Factorisation:
 
     Raises
     ------
-    SingularPivot
+    SingularPivotError
         If a pivot vanishes or overflows.
     """
     size = matrix.shape[0]
     try:
         solver = qdldl.Solver(csc_matrix(triu(matrix)), upper=True)
     except RuntimeError as error:
-        raise SingularPivot(str(error)) from error
+        raise SingularPivotError(str(error)) from error
     lower, pivots, order = solver.factors()
     lower = csc_matrix(lower) + identity(size, format="csc")
     if not np.all(np.isfinite(pivots)) or np.any(pivots == 0):
-        raise SingularPivot("zero pivot")
+        raise SingularPivotError("zero pivot")
     permuted = matrix[order][:, order]
     residual = abs(permuted - lower @ (diags_array(pivots) @ lower.T))
     magnitude = abs(lower) @ (abs(pivots) * (abs(lower).T @ np.ones(size)))

@@ -1,4 +1,5 @@
-"""Lower bounds of many eigenvalues at once from trial functions, fluxes, and one rough bound of the next eigenvalue.
+"""Lower bounds of many eigenvalues at once from trial functions, fluxes, and one rough bound of the next
+eigenvalue.
 
 Lehmann (Math. Z. 1949/50), Goerisch (1980s); H. Behnke and F. Goerisch in Topics in Validated Computations (1994).
 """
@@ -111,6 +112,7 @@ def goerisch_gram(trial: TrialSpace, flux: FluxSpace, functions: Array, ratios: 
     matrix = exact_sum(scaled.swapaxes(1, 2) @ residual)
     size, blur = np.abs(scaled), doubt / (p * jacobian)
     error = blur.swapaxes(1, 2) @ (np.abs(residual) + doubt)
-    error = exact_sum(error + error.swapaxes(1, 2) + gamma(residual.shape[1] + 8) * (size.swapaxes(1, 2) @ np.abs(residual)))
+    error = error + error.swapaxes(1, 2) + gamma(residual.shape[1] + 8) * (size.swapaxes(1, 2) @ np.abs(residual))
+    error = exact_sum(error)
     # The forms are those of the computed gradient metric; the flux metric is its inverse up to metric_error.
     return flux.energy_gram(fields).scaled(1 + 4 * energy.metric_error) + Gram((matrix + matrix.T) / 2, 1.01 * error)

@@ -8,14 +8,22 @@ from dataclasses import dataclass, replace
 import numpy as np
 from numpy.typing import NDArray
 
-from service.bounds.condensed import NotPositive
+from service.bounds.condensed import NotPositiveError
 from service.bounds.counting import reaches
 from service.bounds.enclosure import UNKNOWN, Enclosure
 from service.bounds.flux import FluxSpace
 from service.bounds.lehmann import goerisch_gram, lower_bounds, upper_bounds
 from service.bounds.ritz import TrialSpace
 from service.bounds.rounding import down, up
-from service.bounds.separation import CLEAR_GAP, LEAST_GAP, Separation, counted_bound, gap_above, reachable, separate
+from service.bounds.separation import (
+    CLEAR_GAP,
+    LEAST_GAP,
+    Separation,
+    counted_bound,
+    gap_above,
+    reachable,
+    separate,
+)
 from service.elements.reference import MAX_ORDER
 from service.errors import ComputationError
 from service.forms.form import Pencil
@@ -68,9 +76,7 @@ class Step:
     seconds: float
 
 
-def sharpen(
-    pencil: Pencil, index: int, cut: Separation, order: int, functions: Array, ratios: Array
-) -> Enclosure:
+def sharpen(pencil: Pencil, index: int, cut: Separation, order: int, functions: Array, ratios: Array) -> Enclosure:
     """Enclosure of tau_index from trial functions of one order and fluxes of the same order."""
     used = max(cut.count, index)
     functions, ratios = functions[:, :, :used], ratios[:used]
@@ -102,7 +108,7 @@ def positive_shift(pencil: Pencil, ratio: float) -> float:
     density = pencil.weight.potential[:, 0]
     if np.all(density > 0):
         least = max(least, 2 * float(np.max(-pencil.energy.potential[:, 0] / density)))
-    return 2.0 ** round(math.log2(least) + (0.5 if least > abs(ratio) + 1e-300 else 0.0))
+    return float(2.0 ** round(math.log2(least) + (0.5 if least > abs(ratio) + 1e-300 else 0.0)))
 
 
 @dataclass(frozen=True)
@@ -160,7 +166,7 @@ def first_pairs(space: TrialSpace, wanted: int) -> tuple[Array, Array]:
     while True:
         try:
             return space.smallest(shift, wanted, 1e-4, rounds=4)
-        except NotPositive:
+        except NotPositiveError:
             shift *= 8
 
 
@@ -168,11 +174,9 @@ def shrink_to(pencil: Pencil, goal: float) -> float:
     """By how much edges must shrink before A - goal B has minorants; found by scaling potentials instead of edges."""
     form = pencil.at(goal)
     for halvings in range(1, 40):
-        eased = replace(
-            form, potential=form.potential * 0.25**halvings, facet=form.facet * 0.5**halvings
-        )
+        eased = replace(form, potential=form.potential * 0.25**halvings, facet=form.facet * 0.5**halvings)
         if reaches(eased):
-            return 0.9 * 0.5 ** (halvings - 0.5)
+            return float(0.9 * 0.5 ** (halvings - 0.5))
     return 0.5
 
 

@@ -82,7 +82,8 @@ class TrialSpace:
     def gram(self, form: Form, functions: Array) -> Gram:
         """Inner products of functions in a form, rounding bounded.
 
-        Gradients do not see constants: taking a vertex value off first keeps the allowance relative to the variation
+        Gradients do not see constants: taking a vertex value off first keeps the allowance relative to the
+        variation
         of a function in a cell instead of its size.
         """
         corners = self.pencil.mesh.dimension + 1
@@ -117,7 +118,7 @@ class TrialSpace:
 
         Raises
         ------
-        NotPositive
+        NotPositiveError
             If A + shift B is not positive definite.
         """
         numbering = self.numbering
@@ -133,7 +134,5 @@ class TrialSpace:
             begin[: int(np.max(corners, initial=-1)) + 1, 0] = 1.0
         else:
             begin = numbering.restrict(start)
-        values, vectors = smallest_pairs(
-            system.solve, mass, begin, min(count, begin.shape[1]), tolerance, rounds
-        )
+        values, vectors = smallest_pairs(system.solve, mass, begin, min(count, begin.shape[1]), tolerance, rounds)
         return values - shift, numbering.spread(vectors)

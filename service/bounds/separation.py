@@ -83,7 +83,8 @@ def separate(pencil: Pencil, ritz: Array, size: int) -> Separation:
 def counted_bound(pencil: Pencil, estimate: float, index: int, order: int, width: float) -> float:
     """A proved lower bound of tau_index by counting alone, -inf where there is none.
 
-    Bisects the distance below the upper bound ``estimate``, relative and on a logarithmic scale from ``width`` / 100.
+    Bisects the distance below the upper bound ``estimate``, relative and on a logarithmic scale from ``width`` /
+    100.
     """
     low, high = math.log(width / 100), math.log(2.0)
     size = abs(estimate)

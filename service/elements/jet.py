@@ -36,11 +36,12 @@ def times(*factors: Jet) -> Jet:
     """Product rule."""
 
     def pair(a: Jet, b: Jet) -> Jet:
-        product = a[:1] * b + b[:1] * a
+        product: Jet = a[:1] * b + b[:1] * a
         product[0] = a[0] * b[0]
         return product
 
-    return reduce(pair, factors)
+    product: Jet = reduce(pair, factors)
+    return product
 
 
 def jacobi(degree: int, alpha: int, beta: int, x: Jet, t: Jet) -> list[Jet]:
@@ -63,7 +64,8 @@ def jacobi(degree: int, alpha: int, beta: int, x: Jet, t: Jet) -> list[Jet]:
 def simplex_polynomials(degree: int, barycentric: Sequence[Jet], weight: int = 0) -> list[Jet]:
     """A basis of the polynomials of at most ``degree`` on a simplex, in its barycentric coordinates.
 
-    Orthogonal on the simplex for the weight (product of barycentric coordinates)^weight (Proriol 1957; Koornwinder 1975;
+    Orthogonal on the simplex for the weight (product of barycentric coordinates)^weight (Proriol 1957; Koornwinder
+    1975;
     Dubiner, J. Sci. Comput. 6 (1991)). On the faces of a larger simplex the same polynomials, extended.
     """
     partial = [(0, constant(1, barycentric[0]))]

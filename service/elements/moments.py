@@ -25,7 +25,8 @@ MAX_MOMENT_ORDER = 6
 class MomentReference:
     """Cell polynomials psi of order k + 1 and facet polynomials chi of order k, all orthonormal.
 
-    psi is orthonormal on the unit simplex, chi in the mean over a facet. Coefficient modes (psi~ of order up to q, chi~ on
+    psi is orthonormal on the unit simplex, chi in the mean over a facet. Coefficient modes (psi~ of order up to q,
+    chi~ on
     facets) are multiples of these polynomials with mode 0 the constant 1.
 
     stiffness : (m, d, d, n, n) integrals of psi~_m d_a psi_i d_b psi_j.
@@ -96,5 +97,12 @@ def moment_reference(dimension: int, order: int, degree: int = 0) -> MomentRefer
             ]
         )
     normals = np.vstack([np.ones(d), -np.eye(d)]) / factorial(d - 1)
-    tensors = (stiffness, products, np.array(traces), np.array(derivatives).swapaxes(0, 1), facet_products)
-    return MomentReference(order, *(tensor.astype(float) for tensor in tensors), normals)
+    return MomentReference(
+        order,
+        stiffness.astype(float),
+        products.astype(float),
+        np.array(traces, dtype=float),
+        np.array(derivatives, dtype=float).swapaxes(0, 1),
+        facet_products.astype(float),
+        normals,
+    )

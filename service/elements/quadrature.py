@@ -16,7 +16,7 @@ def gauss(count: int) -> Rule:
 
 def precise_gauss(count: int) -> Rule:
     """The same rule in NumPy's longest floating-point type, by Newton's method on the Legendre recurrence."""
-    x = np.polynomial.legendre.leggauss(count)[0].astype(np.longdouble)
+    x: NDArray[Any] = np.polynomial.legendre.leggauss(count)[0].astype(np.longdouble)
     slope = np.ones_like(x)
     for _ in range(3):
         before, now = np.ones_like(x), x.copy()

@@ -1,6 +1,7 @@
 """Raviart-Thomas vector fields of any order in any dimension.
 
-RT_k is spanned by polynomials of order k times the lowest-order fields (x - P) / (d |T|), P a vertex. Each such field
+RT_k is spanned by polynomials of order k times the lowest-order fields (x - P) / (d |T|), P a vertex. Each such
+field
 carries one unit of flux out through the facet opposite P and none through the others. Hence facet functions
 are facet polynomials times the facet's field, and bubbles are lambda_P q (x - P) with q of order k - 1, lambda_P
 vanishing on that facet: normal traces vanish identically, not only up to rounding.

@@ -1,7 +1,9 @@
 """Tensors on the reference simplex: all that affine elements ever need of a basis.
 
-Local matrices on an affine cell are combinations of these tensors with a few numbers of the cell (Piola transforms).
-The tensors are computed in the longest floating-point type with quadrature that is exact in exact arithmetic, and rounded
+Local matrices on an affine cell are combinations of these tensors with a few numbers of the cell (Piola
+transforms).
+The tensors are computed in the longest floating-point type with quadrature that is exact in exact arithmetic, and
+rounded
 once; tests compare their entries with multiple-precision arithmetic, and ``REFERENCE_ERROR`` bounds the difference.
 """
 
@@ -123,16 +125,14 @@ def flux_tensors(dimension: int, order: int) -> tuple[Array, Array]:
     points, weights = simplex_rule(dimension, 2 * order + 2, precise=True)
     values, divergences = raviart_thomas.basis(dimension, order, points)
     weighted = values * weights
-    mass = np.array(
-        [[weighted[:, a] @ values[:, b].T for b in range(dimension)] for a in range(dimension)]
-    )
+    mass = np.array([[weighted[:, a] @ values[:, b].T for b in range(dimension)] for a in range(dimension)])
     psi = raw_orthonormal(dimension, order, points, scalar_norms(dimension, order, precise=True))[:, 0]
     return mass, (psi * weights) @ divergences.T
 
 
 def change_basis(tensor: Array, transform: Array) -> Array:
-    """A bilinear tensor (..., n, n) in new functions, the columns of ``transform``."""
-    return np.asarray(transform.T @ tensor @ transform)
+    """A bilinear tensor (..., n, n) in new functions, the columns of ``transform``, rounded to doubles."""
+    return np.asarray(transform.T @ tensor @ transform, dtype=float)
 
 
 def scalar_transform(stiffness: Array, skeleton: int) -> Array:
@@ -173,12 +173,18 @@ def flux_transform(mass: Array, divergence: Array, facet: int) -> tuple[Array, i
 
 @lru_cache(maxsize=64)
 def scalar_reference(dimension: int, order: int, degree: int = 0) -> ScalarReference:
-    """Tensors of the scalar element of ``order`` >= 1 for coefficients of ``degree``; computed precisely, rounded once."""
+    """Tensors of the scalar element of ``order`` >= 1 for coefficients of ``degree``."""
     skeleton = scalar.skeleton_size(dimension, order)
     mass, stiffness, facet_mass, moments = scalar_tensors(dimension, order, degree)
     change = scalar_transform(stiffness[0].astype(float), skeleton)
-    bilinear = (change_basis(tensor, change).astype(float) for tensor in (mass, stiffness, facet_mass))
-    return ScalarReference(order, *bilinear, (moments @ change).astype(float), skeleton)
+    return ScalarReference(
+        order,
+        change_basis(mass, change),
+        change_basis(stiffness, change),
+        change_basis(facet_mass, change),
+        np.asarray(moments @ change, dtype=float),
+        skeleton,
+    )
 
 
 @lru_cache(maxsize=64)
@@ -187,5 +193,5 @@ def flux_reference(dimension: int, order: int) -> FluxReference:
     mass, divergence = flux_tensors(dimension, order)
     facet = (dimension + 1) * simplex_dimension(dimension - 1, order)
     change, free = flux_transform(mass.astype(float), divergence.astype(float), facet)
-    tensors = change_basis(mass, change).astype(float), (divergence @ change).astype(float)
-    return FluxReference(order, *tensors, facet, free)
+    divergences = np.asarray(divergence @ change, dtype=float)
+    return FluxReference(order, change_basis(mass, change), divergences, facet, free)

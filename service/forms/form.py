@@ -10,7 +10,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from service.bounds.rounding import UNIT
-from service.elements.jet import simplex_dimension, simplex_polynomials
+from service.elements.jet import simplex_dimension
 from service.elements.reference import raw_orthonormal, scalar_norms
 from service.elements.scalar import barycentric, subsimplices
 from service.meshing.mesh import Mesh
@@ -22,7 +22,8 @@ Array = NDArray[np.float64]
 class Form:
     """Q[u] = int G grad u . grad u + int p u^2 + sum_F int_F r u^2 on functions that vanish on the Dirichlet part.
 
-    Coefficients are given by modes: factors of the orthogonal polynomials of the unit simplex (of the facet for r), scaled
+    Coefficients are given by modes: factors of the orthogonal polynomials of the unit simplex (of the facet for r),
+    scaled
     so that mode 0 is the constant 1 and its factor the mean.
 
     dirichlet : (nf,) bool, facets on which functions vanish.
@@ -74,7 +75,7 @@ class Form:
         """(nc, d, d) constant matrices with G >= floor on the cell."""
         d = self.mesh.dimension
         loss = np.linalg.norm(self.diffusion[:, 1:], axis=(2, 3)) @ suprema(d, self.diffusion.shape[1])[1:]
-        return self.diffusion[:, 0] - loss[:, None, None] * np.eye(d)
+        return np.asarray(self.diffusion[:, 0] - loss[:, None, None] * np.eye(d))
 
     @cached_property
     def potential_swing(self) -> Array:
@@ -99,10 +100,12 @@ class Form:
 
     @cached_property
     def uncertainty(self) -> float:
-        """Bound e: each part of the true form (gradients, potential on a cell, a facet) is that of these arrays times a
+        """Bound e: each part of the true form (gradients, potential on a cell, a facet) is that of these arrays
+        times a
         factor within 1 - e and 1 + e.
 
-        If the true Jacobian is (I + F) J, gradients change by (I + F)^-T, volumes by det(I + F) and facets in between:
+        If the true Jacobian is (I + F) J, gradients change by (I + F)^-T, volumes by det(I + F) and facets in
+        between:
         factors within (1 +- |F|)^d / (1 -+ |F|)^2; then the rounding of the metrics and of sums of forms.
         """
         return 1.1 * (self.mesh.dimension + 2) * self.mesh.shape_error + self.metric_error
@@ -220,7 +223,7 @@ def constant_form(
     potential: float | Array = 0.0,
     facet: float | Array = 0.0,
 ) -> Form:
-    """A form with coefficients constant on each cell and facet; scalars, one matrix, or arrays (nc, d, d), (nc,), (nf,)."""
+    """A form with constants on cells and facets: scalars, one matrix, or arrays (nc, d, d), (nc,), (nf,)."""
     cells, d = len(mesh.cells), mesh.dimension
     matrix = np.asarray(diffusion, dtype=float)
     if matrix.ndim < 3:

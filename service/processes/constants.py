@@ -130,9 +130,7 @@ def run(inputs: JSON, report: Report) -> JSON:
         now = time.monotonic()
         deadline = now + (last - now) / (len(questions) - done)
         budget = Budget(1.9 * request.tolerance, deadline, request.limits.unknowns)
-        mesh_at = partial(
-            _mesh, question, GRADING * budget.width, max(1000, request.limits.unknowns // CELL_UNKNOWNS)
-        )
+        mesh_at = partial(_mesh, question, GRADING * budget.width, max(1000, request.limits.unknowns // CELL_UNKNOWNS))
         for step in enclose(mesh_at, refine, question.pencil, question.index, budget):
             value = step.enclosure.inverse_root(step.mesh.unit)
             tally.constants[name] = describe(request, question, value)
