@@ -316,7 +316,7 @@ def proves(form: Form, order: int, most: int, scale: float) -> bool:
     if form.uncertainty > LARGEST_RESERVE:
         return False
     cells, facets = len(form.mesh.cells), len(form.mesh.facets)
-    form = form.lowered()
+    form = form.moved(-1.0)
     positive = replace(form, potential=np.full((cells, 1), scale), facet=np.zeros((facets, 1)))
     try:
         above = Minorant(positive, order).condensed()

@@ -47,15 +47,14 @@ def definite_pencil(first: Array, second: Array) -> tuple[Array, Array, float, f
     return (values, vectors, e, f) if f < 0.5 else None
 
 
-def upper_bounds(energy: Gram, mass: Gram, parts: Gram, uncertainty: float) -> Array:
-    """Proved upper bounds of tau_1..tau_m for the true forms: the Ritz values of m trial functions.
+def upper_bounds(energy: Gram, mass: Gram) -> Array:
+    """Proved upper bounds of tau_1..tau_m: the Ritz values of m trial functions.
 
-    parts : the inner products of the sum of the absolute values of the parts of A.
-    uncertainty : of each part of both forms.
+    energy, mass : inner products in a form above A and a form below B.
     """
     count = len(energy.matrix)
-    above = energy.matrix + energy.slack + uncertainty * (parts.matrix + parts.slack)
-    below = (mass.matrix - mass.slack) * (1 - uncertainty)
+    above = energy.matrix + energy.slack
+    below = mass.matrix - mass.slack
     solved = definite_pencil(above, below)
     if solved is None:
         return np.full(count, np.inf)

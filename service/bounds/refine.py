@@ -85,13 +85,15 @@ def sharpen(pencil: Pencil, index: int, cut: Separation, order: int, functions: 
     trial = TrialSpace(shifted, order)
     mass = trial.gram(pencil.weight, functions)
     energy = trial.gram(shifted.energy, functions)
-    parts = trial.gram(shifted.energy.absolute(), functions)
-    error = pencil.ratio_error
-    if functions.shape[2] < index or error > LARGEST_ERROR:
+    if functions.shape[2] < index:
         return UNKNOWN
-    ritz = upper_bounds(energy, mass, parts, shifted.energy.uncertainty)[index - 1] - shift
+    raised, lessened = shifted.energy.moved(1.0), pencil.weight.moved(-1.0)
+    ritz = upper_bounds(trial.gram(raised, functions), trial.gram(lessened, functions))[index - 1] - shift
     above = Enclosure(-math.inf, up(ritz), upper_by=f"Ritz, order {order}")
     if not cut.count or functions.shape[2] < cut.count:
+        return above
+    error = shifted.ratio_error
+    if error > LARGEST_ERROR:
         return above
     dual = goerisch_gram(trial, FluxSpace(shifted.energy, order), functions, ratios + shift)
     rho = down((cut.rho + shift) * (1 - error))
@@ -248,7 +250,7 @@ def enclose(
 
 def count_below(pencil: Pencil, estimate: float, index: int, order: int, width: float) -> Enclosure:
     """What counting alone proves, where no gap in the spectrum lets the sharp bounds work."""
-    rank = min(order, 4)
+    rank = min(order - 1, 4)
     bound = counted_bound(pencil, estimate, index, rank, width)
     by = f"nonconforming minorant of order {rank}, inertia count"
     return Enclosure(bound, math.inf, lower_by=by)

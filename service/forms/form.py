@@ -30,6 +30,8 @@ class Form:
     diffusion : (nc, m, d, d) symmetric matrices G.
     potential : (nc, m) p.
     facet : (nf, mf) r, on inner facets too.
+    diffusion_error, potential_error, facet_error : (nc,), (nc,), (nf,) bounds of the distance of the true coefficients
+        from these polynomials, in the 2-norm for G.
     """
 
     mesh: Mesh
@@ -37,6 +39,9 @@ class Form:
     diffusion: Array
     potential: Array
     facet: Array
+    diffusion_error: Array
+    potential_error: Array
+    facet_error: Array
 
     @cached_property
     def degree(self) -> int:
@@ -110,26 +115,16 @@ class Form:
         """
         return 1.1 * (self.mesh.dimension + 2) * self.mesh.shape_error + self.metric_error
 
-    def lowered(self) -> "Form":
-        """A form below every true form that these arrays may stand for."""
-        e = self.uncertainty
-        potential, facet = self.potential.copy(), self.facet.copy()
-        potential[:, 0] -= e * (np.abs(potential[:, 0]) + self.potential_swing)
-        facet[:, 0] -= e * (np.abs(facet[:, 0]) + self.facet_swing)
-        diffusion = self.diffusion.copy()
-        swing = np.linalg.norm(diffusion, axis=(2, 3)) @ suprema(self.mesh.dimension, diffusion.shape[1])
-        diffusion[:, 0] -= (e * swing)[:, None, None] * np.eye(self.mesh.dimension)
-        return replace(self, diffusion=diffusion, potential=potential, facet=facet)
-
-    def absolute(self) -> "Form":
-        """A constant form that bounds the sum of the absolute values of this form's parts."""
-        swing = np.linalg.norm(self.diffusion, axis=(2, 3)) @ suprema(self.mesh.dimension, self.diffusion.shape[1])
-        return replace(
-            self,
-            diffusion=(swing[:, None, None] * np.eye(self.mesh.dimension))[:, None],
-            potential=(np.abs(self.potential[:, 0]) + self.potential_swing)[:, None],
-            facet=(np.abs(self.facet[:, 0]) + self.facet_swing)[:, None],
-        )
+    def moved(self, sign: float) -> "Form":
+        """A form below (sign -1) or above (sign +1) every true form that these arrays may stand for."""
+        e, d = self.uncertainty, self.mesh.dimension
+        potential, facet, diffusion = self.potential.copy(), self.facet.copy(), self.diffusion.copy()
+        potential[:, 0] += sign * (e * (np.abs(potential[:, 0]) + self.potential_swing) + 1.001 * self.potential_error)
+        facet[:, 0] += sign * (e * (np.abs(facet[:, 0]) + self.facet_swing) + 1.001 * self.facet_error)
+        size = np.linalg.norm(diffusion, axis=(2, 3)) @ suprema(d, diffusion.shape[1])
+        diffusion[:, 0] += sign * (e * size + 1.001 * self.diffusion_error)[:, None, None] * np.eye(d)
+        none, bare = np.zeros(len(potential)), np.zeros(len(facet))
+        return Form(self.mesh, self.dirichlet, diffusion, potential, facet, none, none, bare)
 
     @property
     def steady(self) -> bool:
@@ -143,6 +138,9 @@ class Form:
             diffusion=combined(self.diffusion, other.diffusion, factor),
             potential=combined(self.potential, other.potential, factor),
             facet=combined(self.facet, other.facet, factor),
+            diffusion_error=self.diffusion_error + abs(factor) * other.diffusion_error,
+            potential_error=self.potential_error + abs(factor) * other.potential_error,
+            facet_error=self.facet_error + abs(factor) * other.facet_error,
         )
 
 
@@ -168,8 +166,18 @@ class Pencil:
 
     @cached_property
     def ratio_error(self) -> float:
-        """Bound e: where all parts of A are >= 0, a true ratio is one of these arrays times a factor within 1 +- e."""
-        return 2.1 * self.energy.uncertainty
+        """Bound e: where all parts of A are >= 0, a true ratio is one of these arrays times a factor within 1 +- e.
+
+        For coefficients constant on each cell and B a mass; infinite where A has a part that is not positive.
+        """
+        energy, weight = self.energy, self.weight
+        least = np.linalg.eigvalsh(energy.diffusion[:, 0])[:, 0]
+        parts = [energy.diffusion_error / least, weight.potential_error / weight.potential[:, 0]]
+        if np.any(energy.potential_error):
+            parts.append(energy.potential_error / energy.potential[:, 0])
+        worst = max(float(np.max(part)) for part in parts)
+        fair = all(np.all(part >= 0) for part in parts)
+        return 2.1 * energy.uncertainty + 2.1 * worst if fair else np.inf
 
 
 def combined(first: Array, second: Array, factor: float) -> Array:
@@ -230,7 +238,8 @@ def constant_form(
         matrix = np.broadcast_to(matrix * np.eye(d) if matrix.ndim == 0 else matrix, (cells, d, d))
     volume = np.broadcast_to(np.asarray(potential, dtype=float), (cells,))
     surface = np.broadcast_to(np.asarray(facet, dtype=float), (len(mesh.facets),))
-    return Form(mesh, dirichlet, matrix[:, None], volume[:, None], surface[:, None])
+    none, bare = np.zeros(cells), np.zeros(len(mesh.facets))
+    return Form(mesh, dirichlet, matrix[:, None], volume[:, None], surface[:, None], none, none, bare)
 
 
 def laplace(mesh: Mesh, dirichlet: NDArray[np.bool_]) -> Pencil:
