@@ -12,6 +12,8 @@ import numpy as np
 import shapely
 from numpy.typing import NDArray
 
+from service.meshing.vectors import cross
+
 ASPECT = 150.0
 """Longest edge wanted relative to the width of the channel; triangles come out up to a third flatter."""
 
@@ -32,7 +34,7 @@ def channel_sizes(
     Parameters
     ----------
     points : (n, 2) vertices in mesh units.
-    edges : (m, 2) start and end of each edge, the domain on its left.
+    edges : (m, 2) start and end of each edge, the domain on its left; interfaces in both directions.
     wanted : (n,) size that each vertex asks for.
     size : the largest size.
     limit : largest number of points, and of pieces looked at.
@@ -119,14 +121,14 @@ class _Search:
         near, far = piece[corner < 0], other[corner < 0]
         ways = shapely.shortest_line(pieces[near], self._tree.geometries[far])
         way = np.diff(shapely.get_coordinates(ways).reshape(-1, 2, 2), axis=1)[:, 0]
-        faces = (_cross(step[self.edge[near]], way) > 0) & (_cross(step[far], -way) > 0)
+        faces = (cross(step[self.edge[near]], way) > 0) & (cross(step[far], -way) > 0)
         np.minimum.at(gap, near[faces], np.hypot(*way[faces].T))
 
         piece, other, corner = piece[corner >= 0], other[corner >= 0], corner[corner >= 0]
         own = self._from_corner(self.edge[piece], corner)
         away = self._from_corner(other, corner)
-        narrow = np.abs(_cross(own, away)) * self._aspect < (own * away).sum(axis=1)
-        narrow &= (_cross(step[self.edge[piece]], away) > 0) & (_cross(step[other], own) > 0)
+        narrow = np.abs(cross(own, away)) * self._aspect < (own * away).sum(axis=1)
+        narrow &= (cross(step[self.edge[piece]], away) > 0) & (cross(step[other], own) > 0)
         sharp = np.zeros(len(pieces), dtype=bool)
         sharp[piece[narrow & (extent[piece] > self._wanted[corner])]] = True
         return gap, sharp
@@ -143,8 +145,3 @@ class _Search:
     def _from_corner(self, edge: NDArray[np.int64], corner: NDArray[np.int64]) -> NDArray[np.float64]:
         """Vectors from the vertex ``corner`` to the other ends of the edges."""
         return np.where((self._edges[edge, 0] == corner)[:, None], self._step[edge], -self._step[edge])
-
-
-def _cross(first: NDArray[np.float64], second: NDArray[np.float64]) -> NDArray[np.float64]:
-    """z-components of the cross products of vectors (k, 2)."""
-    return np.asarray(first[:, 0] * second[:, 1] - first[:, 1] * second[:, 0])

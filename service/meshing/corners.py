@@ -24,13 +24,15 @@ _SHARE = 0.1
 def interior_angles(points: NDArray[np.float64], edges: NDArray[np.int64]) -> NDArray[np.float64]:
     """Angle ω in (0, 2π] between the two edges at every vertex, measured inside the domain, (n,).
 
+    2π at points that no edge uses.
+
     Parameters
     ----------
     points : (n, 2) vertices, any unit.
-    edges : (n, 2) start and end of each edge, the domain on its left; each vertex is the start of
-        one edge and the end of one.
+    edges : (m, 2) start and end of each edge, the domain on its left; a vertex is the start of one edge
+        and the end of one, or no edge uses it.
     """
-    before, after = _neighbours(edges)
+    before, after = _neighbours(edges, len(points))
     ahead = points[after] - points
     back = points[before] - points
     cross = ahead[:, 0] * back[:, 1] - ahead[:, 1] * back[:, 0]
@@ -48,19 +50,17 @@ def singular_exponents(
     Parameters
     ----------
     angles : (n,) interior angles ω.
-    edges : (n, 2) start and end of each edge.
-    dirichlet : (n,) whether the edge carries a Dirichlet condition (a Neumann condition otherwise).
+    edges : (m, 2) start and end of each edge.
+    dirichlet : (m,) whether the edge carries a Dirichlet condition (a Neumann condition otherwise).
     """
-    outgoing = np.empty(len(edges), dtype=bool)
-    incoming = np.empty(len(edges), dtype=bool)
+    outgoing = np.zeros(len(angles), dtype=bool)
+    incoming = np.zeros(len(angles), dtype=bool)
     outgoing[edges[:, 0]] = dirichlet
     incoming[edges[:, 1]] = dirichlet
     return np.where(outgoing == incoming, 1.0, 0.5) * np.pi / angles
 
 
-def layer_counts(
-    exponents: NDArray[np.float64], sizes: NDArray[np.float64], target: float
-) -> NDArray[np.int64]:
+def layer_counts(exponents: NDArray[np.float64], sizes: NDArray[np.float64], target: float) -> NDArray[np.int64]:
     """Number n of layers that each corner needs, 0 where none, (n,).
 
     The smallest n ≥ 0 with w² (hσⁿ)^{2α} p^{-4α} ≤ 0.1 · target: the relative eigenvalue error of the
@@ -70,7 +70,7 @@ def layer_counts(
 
     Parameters
     ----------
-    exponents : singular exponents α.
+    exponents : singular exponents α; arrays of any shape that fit together.
     sizes : size h of the elements at the corner relative to the distance over which the solution
         changes there, usually the diameter of the domain (see ``scales``).
     target : relative accuracy wanted in the eigenvalue.
@@ -84,10 +84,9 @@ def layer_counts(
     return np.where(smooth, 0, np.maximum(layers, 0)).astype(np.int64)
 
 
-def _neighbours(edges: NDArray[np.int64]) -> tuple[NDArray[np.int64], NDArray[np.int64]]:
-    """Previous and next vertex of every vertex along its loop."""
-    before = np.empty(len(edges), dtype=np.int64)
-    after = np.empty(len(edges), dtype=np.int64)
+def _neighbours(edges: NDArray[np.int64], count: int) -> tuple[NDArray[np.int64], NDArray[np.int64]]:
+    """Previous and next vertex of every vertex along its loop, the vertex itself where there is none."""
+    before, after = np.arange(count), np.arange(count)
     before[edges[:, 1]] = edges[:, 0]
     after[edges[:, 0]] = edges[:, 1]
     return before, after

@@ -40,16 +40,19 @@ def fill(
     edges: NDArray[np.int64],
     loops: NDArray[np.int64],
     sizes: SizeFunction,
+    interfaces: NDArray[np.int64] | None = None,
     turned: bool = False,
 ) -> tuple[NDArray[np.float64], NDArray[np.int64]]:
     """Triangulate the region to the left of the boundary pieces, none of which is cut.
 
     Parameters
     ----------
-    points : (k, 2) ends of the boundary pieces, in mesh units.
+    points : (k, 2) ends of the pieces, in mesh units.
     edges : (m, 2) the pieces; those of one loop follow one another.
     loops : (m,) loop of each piece; one outer loop, the others holes.
     sizes : element size inside.
+    interfaces : (j, 2) pieces inside, which become sides of triangles; their ends are no inner points of
+        other pieces.
     turned : show gmsh the domain turned by some angle. Thousands of pieces on each of two lines parallel
         to an axis take it minutes otherwise.
 
@@ -65,7 +68,11 @@ def fill(
     rotation = _ROTATION if turned else np.eye(2)
     try:
         with _session():
-            _describe(points @ rotation, edges, loops, replace(sizes, points=sizes.points @ rotation))
+            shown = points @ rotation
+            taken = _describe(shown, edges, loops)
+            if interfaces is not None and len(interfaces):
+                _embed(shown, edges, interfaces, taken + 1)
+            _set_sizes(replace(sizes, points=sizes.points @ rotation), taken)
             gmsh.model.mesh.generate(2)
             tags, flat, _ = gmsh.model.mesh.getNodes(2, _SURFACE)
             _, corners = gmsh.model.mesh.getElementsByType(2, _SURFACE)
@@ -95,10 +102,8 @@ def _session() -> Iterator[None]:
         gmsh.finalize()
 
 
-def _describe(
-    points: NDArray[np.float64], edges: NDArray[np.int64], loops: NDArray[np.int64], sizes: SizeFunction
-) -> None:
-    """Tell gmsh the boundary, one discrete curve with its mesh for each loop, and the sizes."""
+def _describe(points: NDArray[np.float64], edges: NDArray[np.int64], loops: NDArray[np.int64]) -> int:
+    """Tell gmsh the boundary, one discrete curve with its mesh for each loop; returns their number."""
     flat = np.column_stack([points, np.zeros(len(points))])
     curves = []
     for loop, curve in enumerate(np.unique(loops).tolist(), start=1):
@@ -112,17 +117,31 @@ def _describe(
         gmsh.model.mesh.addElementsByType(loop, _LINE, [], (pieces + 1).ravel())
         curves.append(gmsh.model.geo.addCurveLoop([loop]))
     gmsh.model.geo.addPlaneSurface(curves, _SURFACE)
-    gmsh.option.setNumber("Mesh.MeshSizeMax", sizes.size)
     gmsh.model.geo.synchronize()
-    if len(sizes.values):
-        _set_field(sizes, len(curves))
+    return len(curves)
 
 
-def _set_field(sizes: SizeFunction, taken: int) -> None:
+def _embed(points: NDArray[np.float64], edges: NDArray[np.int64], interfaces: NDArray[np.int64], curve: int) -> None:
+    """All interfaces as the mesh of one discrete curve in the surface.
+
+    gmsh takes nodes and sides of a curve as given, whether or not the sides form a line.
+    """
+    flat = np.column_stack([points, np.zeros(len(points))])
+    inner = np.setdiff1d(interfaces, edges)
+    gmsh.model.addDiscreteEntity(1, curve, [])
+    gmsh.model.mesh.addNodes(1, curve, inner + 1, flat[inner].ravel())
+    gmsh.model.mesh.addElementsByType(curve, _LINE, [], (interfaces + 1).ravel())
+    gmsh.model.mesh.embed(1, [curve], 2, _SURFACE)
+
+
+def _set_sizes(sizes: SizeFunction, taken: int) -> None:
     """The size function as a background field: for each group linear growth with the distance.
 
     Points with tags above ``taken`` are added for the vertices that ask for small elements.
     """
+    gmsh.option.setNumber("Mesh.MeshSizeMax", sizes.size)
+    if not len(sizes.values):
+        return
     flat = np.column_stack([sizes.points, np.zeros(len(sizes.points))])
     field = gmsh.model.mesh.field
     grown = []

@@ -39,6 +39,8 @@ def grade(mesh: Triangulation, layers: NDArray[np.int64]) -> Triangulation:
     cells, spans = _fans(corner, a, b, count[graded], rays)
     boundary, part = _cut_boundary(mesh, layers, rays)
     kept = count == 0
+    fans = mesh.regions[graded]
+    rings = np.repeat(fans, count[graded], axis=0)
     return Triangulation(
         points=np.vstack([mesh.points, rays.points]),
         cells=np.vstack([mesh.cells[kept], cells]),
@@ -46,6 +48,7 @@ def grade(mesh: Triangulation, layers: NDArray[np.int64]) -> Triangulation:
         shape_error=mesh.shape_error,
         boundary=boundary,
         part=part,
+        regions=np.vstack([mesh.regions[kept], fans, rings, rings]),
     )
 
 
@@ -68,9 +71,7 @@ class _Rays:
         near, far = mesh.points[ends[ray, 0]], mesh.points[ends[ray, 1]]
         self.points = near + LAYER_RATIO ** level[:, None].astype(np.float64) * (far - near)
 
-    def number(
-        self, vertex: NDArray[np.int64], far: NDArray[np.int64], level: NDArray[np.int64]
-    ) -> NDArray[np.int64]:
+    def number(self, vertex: NDArray[np.int64], far: NDArray[np.int64], level: NDArray[np.int64]) -> NDArray[np.int64]:
         """Number of the point V + σ^level (A − V), A itself for level 0."""
         found = np.searchsorted(self._keys, vertex * self._size + far, sorter=self._order)
         return np.where(level == 0, far, self._offset[self._order[found]] + level - 1)
@@ -107,9 +108,7 @@ def _fans(
     return np.vstack([tips, lower, upper]), np.concatenate([tip_spans, *ring_spans])
 
 
-def _choose(
-    first: NDArray[np.bool_], columns: tuple[NDArray[T], ...], otherwise: tuple[NDArray[T], ...]
-) -> NDArray[T]:
+def _choose(first: NDArray[np.bool_], columns: tuple[NDArray[T], ...], otherwise: tuple[NDArray[T], ...]) -> NDArray[T]:
     """Arrays side by side along the last axis, from ``columns`` where ``first`` holds."""
     one, other = np.stack(columns, axis=-1), np.stack(otherwise, axis=-1)
     return np.where(first.reshape(-1, *[1] * (one.ndim - 1)), one, other)

@@ -1,9 +1,14 @@
 """A simplicial mesh whose element shapes are known to full relative accuracy."""
 
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 
 import numpy as np
 from numpy.typing import NDArray
+
+
+def no_regions() -> NDArray[np.bool_]:
+    """Memberships before the number of cells is known."""
+    return np.empty((0, 0), dtype=bool)
 
 
 @dataclass(frozen=True)
@@ -26,6 +31,8 @@ class Mesh:
         x -> (I + F) x takes the computed cell to the true one.
     origin : (d,) the user's coordinates of the mesh's origin: a point x of the mesh is the user's
         origin + unit x. Empty for a mesh that has no user's coordinates.
+    regions : (nc, R) whether the cell lies inside each region of the domain, outside otherwise; (nc, 0)
+        if not given.
     """
 
     points: NDArray[np.float64]
@@ -38,6 +45,12 @@ class Mesh:
     unit: float
     shape_error: float
     origin: tuple[float, ...] = ()
+    regions: NDArray[np.bool_] = field(default_factory=no_regions)
+
+    def __post_init__(self) -> None:
+        """Memberships of every cell in no region."""
+        if not self.regions.size:
+            object.__setattr__(self, "regions", np.empty((len(self.cells), 0), dtype=bool))
 
     @property
     def dimension(self) -> int:

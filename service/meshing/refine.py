@@ -8,7 +8,7 @@ from service.meshing.mesh import Mesh
 
 
 def refine(mesh: Mesh) -> Mesh:
-    """Join the midpoints of the edges of every triangle; spans stay exact, parts are inherited.
+    """Join the midpoints of the edges of every triangle; spans stay exact, parts and regions are inherited.
 
     Old vertex i is numbered like the pair (i, i), the midpoint of i and j > i like the pair (i, j), in
     lexicographic order. Then the children of (x₀, x₁, x₂), x₀ < x₁ < x₂, are in ascending order as
@@ -46,6 +46,7 @@ def refine(mesh: Mesh) -> Mesh:
         unit=mesh.unit,
         shape_error=mesh.shape_error,
         origin=mesh.origin,
+        regions=np.repeat(mesh.regions, 4, axis=0),
     )
 
 

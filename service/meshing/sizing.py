@@ -7,6 +7,8 @@ import shapely
 from numpy.typing import NDArray
 from scipy.spatial import cKDTree
 
+from service.meshing.vectors import cross, turn
+
 GROWTH = 0.8
 """Increase of the element size per unit of distance from the vertex that asks for a small one."""
 
@@ -60,31 +62,41 @@ def size_function(points: NDArray[np.float64], sizes: NDArray[np.float64], size:
     return SizeFunction(size, values, members, points)
 
 
-def vertex_sizes(points: NDArray[np.float64], edges: NDArray[np.int64], size: float) -> NDArray[np.float64]:
-    """Size that each vertex asks for: its shorter edge, and the gap to what else is near it, (n,).
+def vertex_sizes(
+    points: NDArray[np.float64],
+    edges: NDArray[np.int64],
+    size: float,
+    interfaces: NDArray[np.int64] | None = None,
+) -> NDArray[np.float64]:
+    """Size that each vertex asks for: its shortest segment, and the gap to what else is near it, (n,).
 
-    Only gaps inside the domain count: the straight way from the vertex to the other edge starts into
-    the domain and does not meet that edge from the right.
+    Only gaps inside the domain count: the straight way from the vertex to the other segment starts into
+    the domain and does not meet an edge from the right.
 
     Parameters
     ----------
     points : (n, 2) vertices.
-    edges : (n, 2) start and end of each edge, the domain on its left.
+    edges : (m, 2) start and end of each edge, the domain on its left.
     size : the largest size.
+    interfaces : (k, 2) segments inside the domain.
     """
-    length = np.hypot(*(points[edges[:, 1]] - points[edges[:, 0]]).T)
-    outgoing, incoming = np.empty(len(edges), dtype=np.int64), np.empty(len(edges), dtype=np.int64)
-    outgoing[edges[:, 0]] = np.arange(len(edges))
-    incoming[edges[:, 1]] = np.arange(len(edges))
-    sizes: NDArray[np.float64] = np.minimum(size, np.minimum(length[outgoing], length[incoming]))
-    tree = shapely.STRtree(shapely.linestrings(points[edges]))
-    vertex, edge = tree.query(shapely.points(points), predicate="dwithin", distance=sizes)
-    other = (edge != outgoing[vertex]) & (edge != incoming[vertex])
-    vertex, edge = vertex[other], edge[other]
-    way, left = _way_to_edge(points[vertex], points[edges[edge, 0]], points[edges[edge, 1]])
-    ahead = points[edges[outgoing[vertex], 1]] - points[vertex]
-    back = points[edges[incoming[vertex], 0]] - points[vertex]
-    inside = left & (_turn(ahead, way) < _turn(ahead, back))
+    segments = edges if interfaces is None else np.vstack([edges, interfaces])
+    step = points[segments[:, 1]] - points[segments[:, 0]]
+    sizes = np.full(len(points), size)
+    np.minimum.at(sizes, segments, np.hypot(*step.T)[:, None])
+    tree = shapely.STRtree(shapely.linestrings(points[segments]))
+    vertex, segment = tree.query(shapely.points(points), predicate="dwithin", distance=sizes)
+    other = (segments[segment] != vertex[:, None]).all(axis=1)
+    vertex, segment = vertex[other], segment[other]
+    way, left = _way_to_edge(points[vertex], points[segments[segment, 0]], points[segments[segment, 1]])
+    left |= segment >= len(edges)
+    # Directions of the edges at each vertex; no matter at inner points.
+    ahead, back = np.zeros_like(points), np.zeros_like(points)
+    ahead[edges[:, 0]], back[edges[:, 1]] = step[: len(edges)], -step[: len(edges)]
+    outer = np.zeros(len(points), dtype=bool)
+    outer[edges] = True
+    into = turn(ahead[vertex], way) < turn(ahead[vertex], back[vertex])
+    inside = left & (into | ~outer[vertex])
     gap = np.hypot(*way.T)
     np.minimum.at(sizes, vertex[inside], gap[inside])
     return sizes
@@ -179,13 +191,5 @@ def _way_to_edge(
     """Vectors from the points x to the nearest points of the segments ab; whether x is not to their right."""
     along, across = b - a, x - a
     t = np.clip((along * across).sum(axis=1) / (along**2).sum(axis=1), 0.0, 1.0)
-    left = along[:, 0] * across[:, 1] - along[:, 1] * across[:, 0] >= 0
+    left = cross(along, across) >= 0
     return t[:, None] * along - across, left
-
-
-def _turn(first: NDArray[np.float64], second: NDArray[np.float64]) -> NDArray[np.float64]:
-    """Angle in [0, 2π) by which ``first`` turns counter-clockwise to point along ``second``."""
-    cross = first[:, 0] * second[:, 1] - first[:, 1] * second[:, 0]
-    angle: NDArray[np.float64] = np.arctan2(cross, (first * second).sum(axis=1))
-    angle[angle < 0] += 2 * np.pi
-    return angle

@@ -11,14 +11,14 @@ triangle that is cut out of it by exact rational combinations of its edges, the 
 refinements, to its true counterpart too. So the bound of ‖F‖ over the base triangles holds for ever.
 """
 
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 
 import numpy as np
 from numpy.typing import NDArray
 
 from service.meshing.facets import build_facets, find_facets
 from service.meshing.fill import meshing_failed
-from service.meshing.mesh import Mesh
+from service.meshing.mesh import Mesh, no_regions
 from service.meshing.normalise import Frame
 
 UNIT_ROUNDOFF = 2.0**-53
@@ -36,6 +36,7 @@ class Triangulation:
     shape_error : bound of ‖F‖₂ where the true Jacobian of every cell is (I + F) times its spans.
     boundary : (nb, 2) vertex numbers of the boundary facets.
     part : (nb,) boundary part of each.
+    regions : (nc, R) whether the cell lies inside each region; (nc, 0) if not given.
     """
 
     points: NDArray[np.float64]
@@ -44,6 +45,12 @@ class Triangulation:
     shape_error: float
     boundary: NDArray[np.int64]
     part: NDArray[np.int64]
+    regions: NDArray[np.bool_] = field(default_factory=no_regions)
+
+    def __post_init__(self) -> None:
+        """Memberships of every cell in no region."""
+        if not self.regions.size:
+            object.__setattr__(self, "regions", np.empty((len(self.cells), 0), dtype=bool))
 
 
 def base_spans(
@@ -119,6 +126,7 @@ def as_mesh(triangulation: Triangulation, frame: Frame) -> Mesh:
         unit=frame.unit,
         shape_error=triangulation.shape_error,
         origin=tuple(frame.origin.tolist()),
+        regions=triangulation.regions,
     )
 
 

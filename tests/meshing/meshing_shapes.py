@@ -82,9 +82,7 @@ SHAPES = {
     "four holes": domain(SQUARE, *[square_hole(x, y, 0.1) for x in (0.2, 0.6) for y in (0.2, 0.7)]),
     "notch 359": domain(notched(359)),
     "segment held": domain([(0, 0), (0.3, 0), (0.6, 0), (1, 0), (1, 1), (0, 1)], conditions="ndnnnn"),
-    "short segment held": domain(
-        [(0, 0), (0.495, 0), (0.4951, 0), (1, 0), (1, 1), (0, 1)], conditions="ndnnnn"
-    ),
+    "short segment held": domain([(0, 0), (0.495, 0), (0.4951, 0), (1, 0), (1, 1), (0, 1)], conditions="ndnnnn"),
     "needle": domain([(0, 0), (1, 0), (1, 1e-4)]),
     "shoreline": domain(shoreline(200)),
     "far away": domain(np.array(L_SHAPE) * 50 + 5e6),

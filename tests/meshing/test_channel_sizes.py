@@ -122,9 +122,7 @@ def test_layers_may_take_what_channels_would_need():
 
 
 @settings(max_examples=15, deadline=None, derandomize=True)
-@given(
-    st.floats(-5.0, -2.0), st.floats(-5.0, -2.0), st.floats(0.0, 360.0), st.floats(0.05, 0.9), st.booleans()
-)
+@given(st.floats(-5.0, -2.0), st.floats(-5.0, -2.0), st.floats(0.0, 360.0), st.floats(0.05, 0.9), st.booleans())
 def test_random_channels(one, other, degrees, place, opening):
     """Two squares joined by a tapering channel, turned by any angle."""
     low, high = 10.0**one, 10.0**other

@@ -54,9 +54,7 @@ def test_layers_partition_their_triangle_without_any_rounding(corners, corner):
     places = np.column_stack([np.zeros(2), base.spans[0]])
     turned_places = np.roll(places, -corner, axis=1)
     assert np.array_equal(tip, turned_places[:, 1:] - turned_places[:, :1])
-    assert np.bincount(fan.part).tolist() == [
-        31 if corner in pair else 1 for pair in ((0, 1), (1, 2), (2, 0))
-    ]
+    assert np.bincount(fan.part).tolist() == [31 if corner in pair else 1 for pair in ((0, 1), (1, 2), (2, 0))]
 
 
 @pytest.mark.parametrize("name", ["L-shape", "turned strip 1e-6", "segment held", "far away"])

@@ -9,13 +9,18 @@ import numpy as np
 from meshing_shapes import SHAPES
 
 from service.meshing.generate import mesh_domain
+from service.meshing.mesh import Mesh
 
 NAMES = ("comb", "tiny hole", "shoreline", "notch 359")
 
 
 def digest(name: str) -> str:
-    mesh = mesh_domain(SHAPES[name], size=0.3, target=1e-5)
-    arrays = (mesh.points, mesh.cells, mesh.spans, mesh.facets, mesh.cell_facets, mesh.part)
+    return fingerprint(mesh_domain(SHAPES[name], size=0.3, target=1e-5))
+
+
+def fingerprint(mesh: Mesh) -> str:
+    """A digest of all bits of a mesh."""
+    arrays = (mesh.points, mesh.cells, mesh.spans, mesh.facets, mesh.cell_facets, mesh.part, mesh.regions)
     text = b"".join(np.ascontiguousarray(array).tobytes() for array in arrays)
     return hashlib.sha256(text + repr((mesh.unit, mesh.shape_error)).encode()).hexdigest()
 

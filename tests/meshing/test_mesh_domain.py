@@ -55,9 +55,7 @@ def test_small_features_cost_only_logarithms():
         for name in ("strip 1e-3", "strip 1e-6")
     ]
     assert counts[1] <= 2.5 * counts[0]
-    counts = [
-        len(mesh_domain(SHAPES[name], size=0.25, target=1e-3).cells) for name in ("tiny hole", "tiniest hole")
-    ]
+    counts = [len(mesh_domain(SHAPES[name], size=0.25, target=1e-3).cells) for name in ("tiny hole", "tiniest hole")]
     assert counts[1] <= 2.5 * counts[0]
 
 
@@ -136,11 +134,7 @@ def test_the_mesh_is_valid_for_another_library():
         assert len(other.boundary_facets()) == (mesh.part >= 0).sum()
         assert np.array_equal(np.sort(other.facets.T, axis=1), mesh.facets)
         assert (
-            abs(
-                np.abs(np.linalg.det(mesh.spans)).sum()
-                - np.abs(other.mapping().detDF(np.zeros((2, 1)))).sum()
-            )
-            < 1e-12
+            abs(np.abs(np.linalg.det(mesh.spans)).sum() - np.abs(other.mapping().detDF(np.zeros((2, 1)))).sum()) < 1e-12
         )
 
 

@@ -24,7 +24,5 @@ def test_children_fit_together(name):
 def test_children_are_similar_to_their_parent():
     mesh = mesh_domain(SHAPES["L-shape"], size=0.5, target=1e-6)
     fine = refine(mesh)
-    assert np.array_equal(
-        longest_edges(fine).reshape(-1, 4), np.repeat(longest_edges(mesh)[:, None] / 2, 4, 1)
-    )
+    assert np.array_equal(longest_edges(fine).reshape(-1, 4), np.repeat(longest_edges(mesh)[:, None] / 2, 4, 1))
     assert flatness(fine) == pytest.approx(np.repeat(flatness(mesh), 4))
