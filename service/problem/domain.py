@@ -6,15 +6,25 @@ from typing import Literal
 import numpy as np
 from numpy.typing import NDArray
 
-Condition = Literal["dirichlet", "neumann"]
+from service.problem.expressions.expression import Expression
+from service.problem.piecewise import Piecewise
+
+Condition = Literal["dirichlet", "neumann", "robin"]
 
 
 @dataclass(frozen=True)
 class BoundaryPart:
-    """A named piece of the boundary and the condition that holds on it."""
+    """A named piece of the boundary and the condition that holds on it.
+
+    dirichlet: functions vanish there; neumann: they are free, and the diffusive flux is prescribed;
+    robin: so is the flux plus ``exchange`` times the function.
+
+    exchange : of a Robin part alpha, in length unit per time unit, of any sign; ``None`` for the others.
+    """
 
     name: str
     condition: Condition
+    exchange: Piecewise[Expression] | None = None
 
 
 @dataclass(frozen=True)

@@ -8,6 +8,7 @@ from typing import Any
 from service.errors import ProblemError
 from service.problem.boundary import PartText, part_document, read_boundary
 from service.problem.domain import PlaneDomain
+from service.problem.operator import LAPLACIAN, PLAIN, Norm, Operator
 from service.problem.outline import outline_of
 from service.problem.parts import lay_out
 from service.problem.reading import (
@@ -56,6 +57,8 @@ class Request:
     tolerance : wanted width of each enclosure, relative to its upper end.
     limits : bounds of the run.
     warnings : sentences about what was assumed.
+    operator : the coefficients.
+    norm : the norm of the space of functions.
     """
 
     title: str
@@ -66,6 +69,8 @@ class Request:
     tolerance: float
     limits: Limits
     warnings: tuple[str, ...]
+    operator: Operator = LAPLACIAN
+    norm: Norm = PLAIN
 
 
 def read_request(inputs: object, known: Collection[str], caps: Limits = CAPS) -> Request:
