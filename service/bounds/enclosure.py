@@ -17,10 +17,11 @@ class Enclosure:
 
     @property
     def width(self) -> float:
-        """(upper - lower) / upper; infinite while a side is missing."""
-        if not (math.isfinite(self.lower) and math.isfinite(self.upper)) or self.upper <= 0:
+        """upper - lower relative to the larger size of both (upper, where positive); infinite while a side is missing."""
+        size = max(abs(self.lower), abs(self.upper))
+        if not math.isfinite(size):
             return math.inf
-        return max(0.0, up(self.upper - self.lower) / self.upper)
+        return max(0.0, up(self.upper - self.lower) / size) if size > 0 else 0.0
 
     def intersect(self, other: "Enclosure") -> "Enclosure":
         """The better of both sides: never wider than either.

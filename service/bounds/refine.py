@@ -164,11 +164,17 @@ def can_sharpen(pencil: Pencil) -> bool:
 
 def first_pairs(space: TrialSpace, wanted: int) -> tuple[Array, Array]:
     """Rough smallest ratios, with a shift found by trial that makes the operator positive definite."""
-    shift = 1.0
+    energy, weight = space.pencil.energy, space.pencil.weight
+    stiff, density = np.linalg.norm(energy.diffusion[:, 0]), np.linalg.norm(weight.potential[:, 0])
+    other = np.linalg.norm(weight.diffusion[:, 0])
+    # Where B is no more than a boundary form, A is a norm and needs no shift.
+    shift = float(stiff / (density or other)) if density or other else 0.0
     while True:
         try:
             return space.smallest(shift, wanted, 1e-4, rounds=4)
         except NotPositiveError:
+            if shift == 0.0:
+                raise
             shift *= 8
 
 

@@ -99,5 +99,9 @@ def counted_bound(pencil: Pencil, estimate: float, index: int, order: int, width
             high = middle
         else:
             low = middle
-    t = value(high)
-    return t if proves(pencil.at(t), order, index - 1, scale_of(pencil, t)) else -math.inf
+    # What the proof sets aside for rounding may be more than this distance: then step back.
+    for back in range(5):
+        t = value(high + 1.5 * back)
+        if proves(pencil.at(t), order, index - 1, scale_of(pencil, t)):
+            return t
+    return -math.inf

@@ -1,28 +1,35 @@
-"""What a constant is: a question about one pencil, and the inequality its answer proves."""
+"""What a constant is: a question about forms, and the inequality its answer proves."""
 
-from collections.abc import Callable
-from dataclasses import dataclass
+from collections.abc import Callable, Iterator, Mapping
+from dataclasses import dataclass, replace
 
+from service.bounds.enclosure import Enclosure
+from service.bounds.refine import Budget, Step, enclose
 from service.forms.form import Pencil
 from service.meshing.mesh import Mesh
+from service.meshing.refine import refine
 from service.problem.domain import PlaneDomain
 from service.problem.request import Request
+
+MeshAt = Callable[[float], Mesh]
+"""A mesh with edges of at most a given length in mesh units."""
+
+Narrow = Callable[[MeshAt, Budget], Iterator[Step]]
+"""Ever narrower enclosures of a constant in the user's units, until the budget's width or limits."""
 
 
 @dataclass(frozen=True)
 class Question:
-    """C = tau_index^(-1/2) for the ratios tau of a pencil.
+    """A constant of one problem.
 
     domain : the domain with the conditions that matter for this constant.
-    pencil : the pencil on a mesh of that domain.
-    index : number of the ratio, from 1.
+    narrow : how its enclosure is found.
     statement : the inequality, with C standing for the constant.
     unit : unit of C in the user's units.
     """
 
     domain: PlaneDomain
-    pencil: Callable[[Mesh], Pencil]
-    index: int
+    narrow: Narrow
     statement: str
     unit: str
 
@@ -34,10 +41,43 @@ class Absent:
     statement: str
 
 
+Asked = Question | Absent | Mapping[str, Question | Absent]
+"""One question, or one for each of several boundary parts by name."""
+
+
 @dataclass(frozen=True)
 class Constant:
     """One constant the service knows: its id, what it is, and how a problem turns it into a question."""
 
     id: str
     title: str
-    ask: Callable[[Request], Question | Absent]
+    ask: Callable[[Request], Asked]
+
+
+def from_ratio(
+    pencil_on: Callable[[Mesh], Pencil],
+    index: int = 1,
+    answer: Callable[[Enclosure], Enclosure] = lambda tau: tau,
+    effort: float = 1.0,
+) -> Narrow:
+    """A constant that is a function of one ratio of a pencil.
+
+    Parameters
+    ----------
+    pencil_on : the pencil on a mesh, in the user's units.
+    index : number of the ratio, from 1.
+    answer : the constant's enclosure from the ratio's.
+    effort : relative width of the ratio that a relative width 1 of the constant needs.
+    """
+
+    def narrow(mesh_at: MeshAt, budget: Budget) -> Iterator[Step]:
+        inner = replace(budget, width=effort * budget.width)
+        for step in enclose(mesh_at, refine, pencil_on, index, inner):
+            yield replace(step, enclosure=answer(step.enclosure))
+
+    return narrow
+
+
+def inverse_root(pencil_on: Callable[[Mesh], Pencil], index: int = 1) -> Narrow:
+    """C = tau_index^(-1/2)."""
+    return from_ratio(pencil_on, index, Enclosure.inverse_root, effort=1.9)

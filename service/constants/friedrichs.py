@@ -1,28 +1,34 @@
 """Friedrichs' constant: ||u|| <= C ||grad u|| for functions that vanish on the Dirichlet part."""
 
-import numpy as np
-
-from service.constants.base import Absent, Constant, Question
-from service.forms.form import Pencil, laplace
+from service.constants.base import Absent, Constant, Question, inverse_root
+from service.constants.words import dirichlet_names
+from service.forms.form import Pencil
+from service.forms.operator import Discrete
 from service.meshing.mesh import Mesh
 from service.problem.request import Request
 
 
 def ask(request: Request) -> Question | Absent:
-    """C = tau_1^(-1/2) of int |grad u|^2 against int u^2; absent without a Dirichlet part."""
-    held = [i for i, part in enumerate(request.domain.parts) if part.condition == "dirichlet"]
-    if not held:
+    """C = tau_1^(-1/2) of int |grad u|^2 against int u^2; absent without a Dirichlet part.
+
+    With the norm ``diffusion`` the gradient is weighted: int K grad u . grad u.
+    """
+    names = dirichlet_names(request)
+    if not names:
         return Absent(
             "No Friedrichs constant: no boundary part has the condition dirichlet, so constants are admissible "
             "and have no gradient. Ask for poincare, which bounds functions of zero mean."
         )
+    weighted = request.norm.kind == "diffusion"
 
     def pencil(mesh: Mesh) -> Pencil:
-        return laplace(mesh, np.isin(mesh.part, held))
+        discrete = Discrete(request, mesh)
+        return Pencil(discrete.weighted_gradient if weighted else discrete.gradient, discrete.mass)
 
-    names = ", ".join(request.domain.parts[i].name for i in held)
-    statement = f"||u|| <= C ||grad u|| in L2, for every u in H1 that vanishes on {names}"
-    return Question(request.domain, pencil, 1, statement, request.length_unit)
+    gradient = "||K^(1/2) grad u||" if weighted else "||grad u||"
+    statement = f"||u|| <= C {gradient} in L2, for every u in H1 that vanishes on {names}"
+    unit = f"{request.time_unit}^(1/2)" if weighted else request.length_unit
+    return Question(request.domain, inverse_root(pencil), statement, unit)
 
 
 FRIEDRICHS = Constant("friedrichs", "Friedrichs constant", ask)

@@ -79,7 +79,8 @@ def simplex_polynomials(degree: int, barycentric: Sequence[Jet], weight: int = 0
             chain = jacobi(degree - used, exponent, weight, barycentric[i] - before, total)
             extended += [(used + n, times(polynomial, factor)) for n, factor in enumerate(chain)]
         partial = extended
-    return [polynomial for _, polynomial in partial]
+    # By total degree: the first ones span the polynomials of any lower degree.
+    return [polynomial for _, polynomial in sorted(partial, key=lambda pair: pair[0])]
 
 
 def simplex_dimension(dimension: int, degree: int) -> int:

@@ -12,9 +12,9 @@ from service.forms.form import coefficient_modes
 from service.meshing.mesh import Mesh
 from service.problem.expressions.errors import DerivativeError
 from service.problem.expressions.expression import Expression
+from service.problem.expressions.interval import between
 from service.problem.expressions.interval_algebra import IntervalAlgebra
 from service.problem.expressions.taylor_algebra import TaylorAlgebra
-from service.problem.expressions.interval import between
 from service.problem.expressions.taylor_model import evaluate, filled, range_bounds
 
 Array = NDArray[np.float64]

@@ -3,6 +3,7 @@
 import math
 import sys
 import time
+from collections.abc import Mapping
 from dataclasses import dataclass, field
 from functools import partial
 from typing import Any
@@ -11,14 +12,13 @@ import numpy as np
 
 import service
 from service.bounds.enclosure import Enclosure
-from service.bounds.refine import Budget, Step, enclose
+from service.bounds.refine import Budget, Step
 from service.constants.base import Absent, Question
 from service.constants.registry import CONSTANTS
 from service.errors import ComputationError
 from service.meshing.generate import mesh_domain
 from service.meshing.mesh import Mesh
 from service.meshing.quality import edge_vectors
-from service.meshing.refine import refine
 from service.problem.request import Request, canonical, read_request
 from service.problem.schema import input_descriptions
 from service.processes.base import JSON, Limits, Process, Report
@@ -29,6 +29,10 @@ GRADING = 1e-2
 
 CELL_UNKNOWNS = 12
 """Unknowns per triangle at the lowest order, at least."""
+
+
+Path = tuple[str, ...]
+"""Where a constant stands in the result: its id, and the boundary part if it has one for each."""
 
 
 @dataclass
@@ -42,9 +46,38 @@ class Tally:
     mesh: JSON = field(default_factory=dict)
     warnings: list[str] = field(default_factory=list)
 
+    def asked(self, name: str) -> list[tuple[Path, Question]]:
+        """The questions of one constant, each with where its answer goes; constants that do not exist are entered."""
+        asked = CONSTANTS[name].ask(self.request)
+        pairs: list[tuple[Path, Question | Absent]] = (
+            [((name, part), one) for part, one in asked.items()] if isinstance(asked, Mapping) else [((name,), asked)]
+        )
+        for path, one in pairs:
+            if isinstance(one, Absent):
+                self.place(path, {"exists": False, "statement": one.statement})
+        return [(path, one) for path, one in pairs if isinstance(one, Question)]
+
+    def place(self, path: Path, value: JSON) -> None:
+        """Enter what is known of a constant (of a part)."""
+        if len(path) == 1:
+            self.constants[path[0]] = value
+        else:
+            self.constants.setdefault(path[0], {})[path[1]] = value
+
+    def found(self, path: Path) -> JSON | None:
+        """What is known of a constant (of a part)."""
+        value: JSON | None = self.constants.get(path[0])
+        return value if value is None or len(path) == 1 else value.get(path[1])
+
+    def entries(self) -> list[JSON]:
+        """All constants, those of parts one by one."""
+        return [
+            one for value in self.constants.values() for one in ([value] if "statement" in value else value.values())
+        ]
+
     def document(self) -> JSON:
         """A complete result document."""
-        values = self.constants.values()
+        values = self.entries()
         seconds = round(time.monotonic() - self.begun, 4)
         return {
             "target_met": bool(values) and all(value.get("target_met", True) for value in values),
@@ -63,11 +96,11 @@ class Tally:
 
 def describe(request: Request, question: Question, value: Enclosure) -> JSON:
     """One constant as the result shows it."""
-    known = math.isfinite(value.upper)
+    known = math.isfinite(value.width)
     return {
-        "lower": value.lower,
-        "upper": value.upper if known else None,
-        "best": value.lower,
+        "lower": value.lower if math.isfinite(value.lower) else None,
+        "upper": value.upper if math.isfinite(value.upper) else None,
+        "best": value.lower if value.lower_by.startswith("Ritz") else value.upper,
         "relative_width": value.width if known else None,
         "target_met": value.width <= request.tolerance,
         "rigour": "guaranteed",
@@ -85,6 +118,8 @@ def sentence(name: str, request: Request, question: Question, value: Enclosure, 
     size = f"{step.unknowns:,} unknowns"
     if not math.isfinite(value.upper):
         return f"{name} at least {value.lower:.6g} {question.unit}, no upper bound yet, {target}, {size}"
+    if not math.isfinite(value.lower):
+        return f"{name} at most {value.upper:.6g} {question.unit}, no lower bound yet, {target}, {size}"
     digits = max(4, min(15, 2 - math.floor(math.log10(max(value.width, 1e-13)))))
     interval = f"[{value.lower:.{digits}g}, {value.upper:.{digits}g}] {question.unit}"
     return f"{name} in {interval}, width {value.width:.2g}, {target}, {size}"
@@ -117,23 +152,21 @@ def run(inputs: JSON, report: Report) -> JSON:
     """
     begun = time.monotonic()
     request = read_request(inputs, CONSTANTS)
-    questions: dict[str, Question] = {}
     tally = Tally(request, begun)
-    for name in chosen(request):
-        asked = CONSTANTS[name].ask(request)
-        if isinstance(asked, Absent):
-            tally.constants[name] = {"exists": False, "statement": asked.statement}
-        else:
-            questions[name] = asked
+    questions = [pair for name in chosen(request) for pair in tally.asked(name)]
     last = begun + request.limits.seconds
-    for done, (name, question) in enumerate(questions.items()):
+    for done, (path, question) in enumerate(questions):
         now = time.monotonic()
         deadline = now + (last - now) / (len(questions) - done)
-        budget = Budget(1.9 * request.tolerance, deadline, request.limits.unknowns)
-        mesh_at = partial(_mesh, question, GRADING * budget.width, max(1000, request.limits.unknowns // CELL_UNKNOWNS))
-        for step in enclose(mesh_at, refine, question.pencil, question.index, budget):
-            value = step.enclosure.inverse_root(step.mesh.unit)
-            tally.constants[name] = describe(request, question, value)
+        budget = Budget(request.tolerance, deadline, request.limits.unknowns)
+        cells = max(1000, request.limits.unknowns // CELL_UNKNOWNS)
+        mesh_at = partial(_mesh, question, GRADING * budget.width, cells)
+        name = " ".join(path)
+        for step in question.narrow(mesh_at, budget):
+            value = step.enclosure
+            if not math.isfinite(value.lower) and not math.isfinite(value.upper):
+                continue
+            tally.place(path, describe(request, question, value))
             tally.mesh = mesh_summary(step.mesh)
             tally.history.append(
                 {
@@ -146,10 +179,13 @@ def run(inputs: JSON, report: Report) -> JSON:
             )
             percent = 100 * (done + progress(value.width, request.tolerance)) / len(questions)
             report(min(percent, 99.0), sentence(name, request, question, value, step), tally.document())
-        if not tally.constants[name]["target_met"]:
+        found = tally.found(path)
+        if found is None:
+            tally.place(path, {"rigour": "guaranteed", "target_met": False, "statement": question.statement})
+        if found is None or not found["target_met"]:
             tally.warnings.append(
-                f"{name}: the tolerance was not met within the limits; the enclosure is proved all the same. "
-                "Raise limits.seconds or limits.unknowns for a narrower one."
+                f"{name}: the tolerance was not met within the limits; what is stated is proved all the same. "
+                "Raise limits.seconds or limits.unknowns for a narrower enclosure."
             )
     return tally.document()
 

@@ -1,0 +1,78 @@
+"""Coercivity: a(v, v) >= C ||v||^2."""
+
+import math
+from collections.abc import Iterator
+from dataclasses import replace
+
+import numpy as np
+
+from service.bounds.enclosure import Enclosure
+from service.bounds.refine import Budget, Step
+from service.bounds.rounding import down, up
+from service.constants.base import Absent, Constant, MeshAt, Question, from_ratio
+from service.constants.words import admissible, dirichlet_names, norm_words, operator_unit
+from service.forms.form import Form, Pencil
+from service.forms.operator import Discrete
+from service.meshing.mesh import Mesh
+from service.problem.request import Request
+
+
+def ask(request: Request) -> Question | Absent:
+    """C = tau_1 of the symmetric part a(u, u) against ||u||^2; it may be zero or negative: a result, not an error.
+
+    Functions that oscillate faster and faster around a point x have ratios near the smallest eigenvalue of K(x)
+    against the norm's G: that is an upper bound too, reached or not. Where every part of a - C ||.||^2 is
+    nonnegative, C is a lower bound.
+    """
+    if request.norm.kind != "h1" and not dirichlet_names(request):
+        return Absent("Without a Dirichlet part the gradient is no norm: constants have none. Use the norm h1.")
+
+    def pencil(mesh: Mesh) -> Pencil:
+        discrete = Discrete(request, mesh)
+        return Pencil(discrete.symmetric_part, discrete.norm)
+
+    def narrow(mesh_at: MeshAt, budget: Budget) -> Iterator[Step]:
+        for step in from_ratio(pencil)(mesh_at, budget):
+            sides = by_parts(pencil(step.mesh))
+            better = replace(step, enclosure=step.enclosure.intersect(sides))
+            yield better
+            if better.enclosure.width <= budget.width:
+                return
+
+    statement = f"a(v,v) >= C ||v||^2 for {admissible(request)}; {norm_words(request)}"
+    return Question(request.domain, narrow, statement, operator_unit(request))
+
+
+def by_parts(pencil: Pencil) -> Enclosure:
+    """What comparing coefficients point by point proves of tau_1."""
+    below, above = pencil.energy.moved(-1.0), pencil.energy.moved(1.0)
+    norm = pencil.weight
+    upper = float(np.min(smallest(above.diffusion[:, 0], norm.diffusion[:, 0])))
+    lower = float(np.min(smallest(below.diffusion_floor, norm.diffusion[:, 0])))
+    lower = min(lower, *potential_ratio(below, norm))
+    return Enclosure(
+        down(lower, 64) if math.isfinite(lower) else -math.inf,
+        up(upper, 64),
+        "coefficients compared point by point",
+        "oscillation around a point",
+    )
+
+
+def smallest(first: np.ndarray, second: np.ndarray) -> np.ndarray:
+    """(nc,) smallest eigenvalue of each pencil of 2x2 matrices, the second positive definite."""
+    root = np.linalg.inv(np.linalg.cholesky(second))
+    return np.asarray(np.linalg.eigvalsh(root @ first @ root.swapaxes(1, 2))[:, 0])
+
+
+def potential_ratio(form: Form, norm: Form) -> tuple[float, float]:
+    """Largest t that keeps p - t w0 >= 0 everywhere; -inf where that is impossible or facet terms are negative."""
+    least = form.potential[:, 0] - form.potential_swing
+    density = norm.potential[:, 0]
+    facets = form.facet[:, 0] - form.facet_swing
+    free = math.inf if np.all(facets[~form.dirichlet] >= 0) else -math.inf
+    if np.all(density > 0):
+        return float(np.min(least / density)), free
+    return (math.inf if np.all(least >= 0) else -math.inf), free
+
+
+COERCIVITY = Constant("coercivity", "Coercivity constant", ask)

@@ -1,0 +1,228 @@
+"""The forms of a problem on a mesh, in the user's units: symmetric part of the operator, and the norm.
+
+Mesh coordinates are x = (user - origin) / unit. Dividing every form by unit^d leaves G / unit^2, p, and r / unit,
+so that ratios of forms come out in the user's units; unit is a power of two, the division exact.
+
+Symmetric part of a (integrate b . grad u u by parts on every cell):
+convective form: p = c - div b / 2, r = alpha + b . n / 2, and + [b . n] / 2 where the normal velocity jumps;
+conservative form: p = c + div b / 2, r = alpha + b . n / 2 where the diffusive flux is prescribed, - [b . n] / 2,
+with [b . n] = b1 . n1 + b2 . n2 of both sides' outward normals.
+"""
+
+from collections.abc import Callable
+from dataclasses import dataclass
+from functools import cached_property
+from typing import TypeVar
+
+import numpy as np
+from numpy.typing import NDArray
+
+from service.bounds.rounding import UNIT
+from service.forms.coefficients import Approximation, approximate, user_points, widened
+from service.forms.form import Form, constant_form
+from service.meshing.mesh import Mesh
+from service.problem.expressions.expression import Expression
+from service.problem.operator import Field, Norm, Operator
+from service.problem.piecewise import Piecewise
+from service.problem.request import Request
+
+Array = NDArray[np.float64]
+T = TypeVar("T")
+
+DEGREE = 2
+"""Degree of the polynomials that stand for coefficients that are not constant."""
+
+
+@dataclass(frozen=True)
+class Discrete:
+    """A problem's coefficients on a mesh."""
+
+    request: Request
+    mesh: Mesh
+
+    @property
+    def operator(self) -> Operator:
+        """The operator of the problem."""
+        return self.request.operator
+
+    @cached_property
+    def dirichlet(self) -> NDArray[np.bool_]:
+        """(nf,) facets on which functions vanish."""
+        held = [i for i, part in enumerate(self.request.domain.parts) if part.condition == "dirichlet"]
+        return np.isin(self.mesh.part, held)
+
+    @cached_property
+    def _corners(self) -> tuple[Array, Array]:
+        """First vertices and spans of all cells in user coordinates."""
+        start = user_points(self.mesh, self.mesh.points[self.mesh.cells[:, 0]])
+        return start, self.mesh.spans * self.mesh.unit
+
+    def entries(self, piecewise: Piecewise[T]) -> tuple[NDArray[np.int64], tuple[T, ...]]:
+        """Which entry of a piecewise value holds on each cell, and the values."""
+        names = [region.name for region in self.request.domain.regions]
+        return piecewise.indices(names, self.mesh.regions), piecewise.values
+
+    def on_cells(self, piecewise: Piecewise[T], pick: Callable[[T], Expression]) -> Approximation:
+        """One component of a piecewise value on all cells."""
+        chosen, values = self.entries(piecewise)
+        start, spans = self._corners
+        parts = [(chosen == number, pick(value)) for number, value in enumerate(values)]
+        return gathered(
+            len(chosen),
+            [(cells, approximate(e, start[cells], spans[cells], DEGREE)) for cells, e in parts if cells.any()],
+        )
+
+    def on_facets(
+        self, piecewise: Piecewise[T], pick: Callable[[T], Expression], side: int, facets: NDArray[np.int64]
+    ) -> Approximation:
+        """One component on some facets, seen from the first or second cell beside them."""
+        chosen, values = self.entries(piecewise)
+        ends = user_points(self.mesh, self.mesh.points[self.mesh.facets[facets]])
+        start, spans = ends[:, 0], (ends[:, 1:] - ends[:, :1]).swapaxes(1, 2)
+        owner = chosen[self.mesh.facet_cells[facets, side]]
+        parts = [(owner == number, pick(value)) for number, value in enumerate(values)]
+        return gathered(
+            len(owner), [(own, approximate(e, start[own], spans[own], DEGREE)) for own, e in parts if own.any()]
+        )
+
+    @cached_property
+    def diffusion(self) -> tuple[Array, Array]:
+        """sym K by modes (nc, m, 2, 2) and a bound of the error in the 2-norm."""
+        k = self.operator.diffusion
+        k11, k22 = self.on_cells(k, lambda m: m[0]), self.on_cells(k, lambda m: m[3])
+        k12 = (self.on_cells(k, lambda m: m[1]) + self.on_cells(k, lambda m: m[2])).times(0.5)
+        width = max(part.modes.shape[1] for part in (k11, k12, k22))
+        matrix = np.zeros((len(self.mesh.cells), width, 2, 2))
+        matrix[:, :, 0, 0], matrix[:, :, 1, 1] = widened(k11.modes, width), widened(k22.modes, width)
+        matrix[:, :, 0, 1] = matrix[:, :, 1, 0] = widened(k12.modes, width)
+        return matrix, np.maximum(k11.error, k22.error) + k12.error
+
+    @cached_property
+    def normals(self) -> Array:
+        """(nf, 2) unit normals out of the first cell beside each facet."""
+        mesh = self.mesh
+        gradients = np.linalg.inv(mesh.spans)
+        gradients = np.concatenate([-gradients.sum(axis=1, keepdims=True), gradients], axis=1)
+        normals = np.zeros((len(mesh.facets), 2))
+        for vertex in range(mesh.dimension + 1):
+            facet = mesh.cell_facets[:, vertex]
+            first = mesh.facet_cells[facet, 0] == np.arange(len(facet))
+            outward = -gradients[first, vertex]
+            normals[facet[first]] = outward / np.linalg.norm(outward, axis=1, keepdims=True)
+        return normals
+
+    def normal_velocity(self, facets: NDArray[np.int64], side: int) -> Approximation:
+        """b . n on some facets, b from one side, n out of the first cell."""
+        velocity = self.operator.velocity
+        assert isinstance(velocity, Field)
+        normal = self.normals[facets]
+        return self.on_facets(velocity.components, lambda v: v[0], side, facets).times(normal[:, 0]) + self.on_facets(
+            velocity.components, lambda v: v[1], side, facets
+        ).times(normal[:, 1])
+
+    @cached_property
+    def facet_terms(self) -> Approximation:
+        """r and the interface terms on all facets, 0 where there are none."""
+        mesh, operator = self.mesh, self.operator
+        terms: list[tuple[NDArray[np.int64], Approximation]] = []
+        for number, part in enumerate(self.request.domain.parts):
+            facets = np.flatnonzero(mesh.part == number)
+            if part.condition == "dirichlet" or not len(facets):
+                continue
+            if part.exchange is not None:
+                terms.append((facets, self.on_facets(part.exchange, lambda e: e, 0, facets)))
+            if operator.velocity is not None:
+                terms.append((facets, self.normal_velocity(facets, 0).times(0.5)))
+        if isinstance(operator.velocity, Field) and len(operator.velocity.components.entries) > 1:
+            chosen, _ = self.entries(operator.velocity.components)
+            inner = np.flatnonzero(mesh.facet_cells[:, 1] >= 0)
+            sides = chosen[mesh.facet_cells[inner]]
+            jumping = inner[sides[:, 0] != sides[:, 1]]
+            if len(jumping):
+                jump = self.normal_velocity(jumping, 0) + self.normal_velocity(jumping, 1).times(-1.0)
+                sign = 0.5 if operator.form == "convective" else -0.5
+                terms.append((jumping, jump.times(sign)))
+        width = max((term.modes.shape[1] for _, term in terms), default=1)
+        modes, error = np.zeros((len(mesh.facets), width)), np.zeros(len(mesh.facets))
+        for facets, term in terms:
+            modes[facets] += widened(term.modes, width)
+            error[facets] += term.error + 4 * UNIT * np.abs(modes[facets]).sum(axis=1)
+        return Approximation(modes, error)
+
+    @cached_property
+    def potential(self) -> Approximation:
+        """c -+ div b / 2."""
+        total = self.on_cells(self.operator.reaction, lambda c: c)
+        velocity = self.operator.velocity
+        if isinstance(velocity, Field) and not velocity.solenoidal:
+            sign = -0.5 if self.operator.form == "convective" else 0.5
+            for part in (lambda v: v[0].derivative("x"), lambda v: v[1].derivative("y")):
+                total = total + self.on_cells(velocity.components, part).times(sign)
+        return total
+
+    @cached_property
+    def symmetric_part(self) -> Form:
+        """a(u, u)."""
+        unit = self.mesh.unit
+        matrix, error = self.diffusion
+        facets = self.facet_terms.times(1 / unit)
+        return Form(
+            self.mesh,
+            self.dirichlet,
+            matrix / unit**2,
+            self.potential.modes,
+            facets.modes,
+            error / unit**2,
+            self.potential.error,
+            facets.error,
+        )
+
+    @cached_property
+    def norm(self) -> Form:
+        """|u|_V^2."""
+        return norm_form(self.request.norm, self)
+
+    @cached_property
+    def mass(self) -> Form:
+        """int u^2."""
+        return constant_form(self.mesh, self.dirichlet, potential=1.0)
+
+    @cached_property
+    def weighted_gradient(self) -> Form:
+        """int sym K grad u . grad u."""
+        matrix, error = self.diffusion
+        none, bare = np.zeros(len(error)), np.zeros(len(self.mesh.facets))
+        unit = self.mesh.unit
+        return Form(
+            self.mesh, self.dirichlet, matrix / unit**2, none[:, None], bare[:, None], error / unit**2, none, bare
+        )
+
+    @cached_property
+    def gradient(self) -> Form:
+        """int |grad u|^2."""
+        return constant_form(self.mesh, self.dirichlet, diffusion=1 / self.mesh.unit**2)
+
+    def boundary_mass(self, number: int) -> Form:
+        """int u^2 over one boundary part."""
+        density = np.where(self.mesh.part == number, 1 / self.mesh.unit, 0.0)
+        return constant_form(self.mesh, self.dirichlet, facet=density)
+
+
+def norm_form(norm: Norm, discrete: Discrete) -> Form:
+    """The squared norm as a form."""
+    mesh = discrete.mesh
+    if norm.kind == "diffusion":
+        return discrete.weighted_gradient
+    if norm.kind == "seminorm":
+        return discrete.gradient
+    length = norm.length_scale / mesh.unit
+    return constant_form(mesh, discrete.dirichlet, diffusion=length * length, potential=1.0)
+
+
+def gathered(count: int, parts: list[tuple[NDArray[np.bool_], Approximation]]) -> Approximation:
+    """One approximation from those on disjoint sets of simplices."""
+    width = max((part.modes.shape[1] for _, part in parts), default=1)
+    modes, error = np.zeros((count, width)), np.zeros(count)
+    for where, part in parts:
+        modes[where], error[where] = widened(part.modes, width), part.error
+    return Approximation(modes, error)
