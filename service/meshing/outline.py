@@ -34,7 +34,7 @@ class Outline:
     points, edges, loops, part, interfaces, hosts, regions : as in ``PlaneDomain``, points in mesh units.
     wanted : (n,) size that each vertex asks for.
     scales : (n,) distance over which the solution changes at each vertex.
-    exponents : (n, k) singular exponents at each vertex, rows filled up with 2.
+    exponents : (n, k) singular exponents at each vertex, at least 0.05; rows filled up with 2.
     """
 
     frame: Frame

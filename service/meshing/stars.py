@@ -48,13 +48,10 @@ def find_stars(
     rays = np.vstack([edges, edges[:, ::-1], interfaces, interfaces[:, ::-1]])
     kept = touched[rays[:, 0]]
     center, direction = rays[kept, 0], points[rays[kept, 1]] - points[rays[kept, 0]]
-    backward = (np.repeat([0, 1, 0], [len(edges), len(edges), 2 * len(interfaces)]) == 1)[kept]
-
     reference = np.tile([1.0, 0.0], (len(points), 1))
     reference[edges[:, 0]] = points[edges[:, 1]] - points[edges[:, 0]]
     angle = turn(reference[center], direction)
-    # The edge towards a vertex of the boundary is the last ray there, also across an angle of 2π.
-    angle[backward & (angle == 0)] = 2 * np.pi
+    # At the boundary the first ray is the edge from the vertex, the last one the edge towards it.
     order = np.lexsort((angle, center))
     center, angle, direction = center[order], angle[order], direction[order]
 
