@@ -17,7 +17,7 @@ class Enclosure:
 
     @property
     def width(self) -> float:
-        """upper - lower relative to the larger size of both (upper, where positive); infinite while a side is missing."""
+        """upper - lower relative to the larger size of both (upper, where positive); infinite with a side missing."""
         size = max(abs(self.lower), abs(self.upper))
         if not math.isfinite(size):
             return math.inf

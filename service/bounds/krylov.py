@@ -14,11 +14,16 @@ Operator = Callable[[Array], Array]
 
 def orthonormalise(block: Array, mass: Operator) -> Array:
     """A basis of the span of ``block`` (n, b), orthonormal in the mass inner product; drops dependent columns."""
-    norms = np.sqrt(np.einsum("ij,ij->j", block, mass(block)))
-    block = block / np.where(norms > 0, norms, 1.0)
+    norms = sizes(block, mass)
+    block = block[:, norms > 0] / norms[norms > 0]
     values, vectors = np.linalg.eigh(block.T @ mass(block))
     keep = values > 1e-13 * values[-1]
     return np.asarray(block @ (vectors[:, keep] / np.sqrt(values[keep])))
+
+
+def sizes(block: Array, mass: Operator) -> Array:
+    """Norms of the columns."""
+    return np.asarray(np.sqrt(np.maximum(np.einsum("ij,ij->j", block, mass(block)), 0.0)))
 
 
 def smallest_pairs(
@@ -56,10 +61,14 @@ def smallest_pairs(
         image = inverse(mass(block))
         images = [image]
         for _ in range(depth - 1):
-            fresh = image
+            fresh, length = image, sizes(image, mass)
             for _ in range(2):
                 fresh = fresh - basis @ (basis.T @ mass(fresh))
-            fresh = orthonormalise(fresh, mass)
+            # What is left of a direction that is in the space already is rounding.
+            left = sizes(fresh, mass) > 1e-9 * length
+            if not np.any(left):
+                break
+            fresh = orthonormalise(fresh[:, left], mass)
             fresh = fresh - basis @ (basis.T @ mass(fresh))
             basis = np.hstack([basis, fresh])
             image = inverse(mass(fresh))

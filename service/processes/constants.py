@@ -15,10 +15,11 @@ from service.bounds.enclosure import Enclosure
 from service.bounds.refine import Budget, Step
 from service.constants.base import Absent, Question
 from service.constants.registry import CONSTANTS
-from service.errors import ComputationError
+from service.errors import ComputationError, Fault, ProblemError
 from service.meshing.generate import mesh_domain
 from service.meshing.mesh import Mesh
 from service.meshing.quality import edge_vectors
+from service.problem.operator import Samples
 from service.problem.request import Request, canonical, read_request
 from service.problem.schema import input_descriptions
 from service.processes.base import JSON, Limits, Process, Report
@@ -204,6 +205,10 @@ def chosen(request: Request) -> tuple[str, ...]:
 
 def accept(inputs: JSON) -> JSON:
     """Checks the inputs and fills in defaults."""
+    if isinstance(read_request(inputs, CONSTANTS).operator.velocity, Samples):
+        pointer = "/problem/operator/velocity/samples"
+        detail = "Velocities by samples are not computed with in this version; state expressions or a stream_function."
+        raise ProblemError(Fault(pointer, detail))
     return canonical(inputs, CONSTANTS)
 
 
