@@ -124,16 +124,15 @@ class Minorant:
         local = compose(stiffness, flux, lifts, trace, shares, potentials)
         if not bounded:
             return (local + local.swapaxes(1, 2)) / 2, np.zeros_like(local)
+        far = np.abs(reference.normals) @ np.abs(metric)
         # The same composition of absolute values bounds every entry's rounding and the error of the tensors.
         bounds = compose(
             np.einsum("cmab,mabij->cij", np.abs(metric), magnitude(reference.stiffness[:modes]), optimize=True),
-            np.einsum("cmfa,mfajl->cfjl", np.abs(normal), magnitude(reference.slopes[:modes]), optimize=True).reshape(
-                flux.shape
-            ),
+            np.einsum("cmfa,mfajl->cfjl", far, magnitude(reference.slopes[:modes]), optimize=True).reshape(flux.shape),
             np.abs(lifts),
             magnitude(trace),
             shares,
-            (np.abs(potentials[0]), np.abs(potentials[1])),
+            (self._potential(shares, absolute=True), self._facet_potential(shares, absolute=True)),
             sign=-1.0,
         )
         return (local + local.swapaxes(1, 2)) / 2, (4 * MOMENT_ERROR + gamma(4 * n + modes * d * d + 24)) * bounds
@@ -161,26 +160,21 @@ class Minorant:
         rest = (1 - facet_need - share) * (1 - 1e-9)
         return Shares(share * form.jacobian / poincare**2, rest / ((d + 1) * through), young, facet_young)
 
-    def _potential(self, shares: "Shares") -> Array:
-        """int p u_T^2 - |(1 - P)(p u_T)|^2 / z on each cell (nc, n, n)."""
+    def _potential(self, shares: "Shares", absolute: bool = False) -> Array:
+        """int p u_T^2 - |(1 - P)(p u_T)|^2 / z on each cell (nc, n, n); ``absolute``: a bound of all that enters."""
         form, products = self.form, self.reference.products
         n = products.shape[2]
         if form.potential.shape[1] == 1:
-            return np.asarray((form.potential[:, 0] * form.jacobian)[:, None, None] * np.eye(n))
-        full = np.einsum("cm,mlj->clj", form.potential, products[: form.potential.shape[1]])
-        beyond = full[:, n:]
-        price = np.where(shares.young > 0, 1 / np.where(shares.young > 0, shares.young, 1), 0.0)
-        square = beyond.swapaxes(1, 2) @ beyond
-        return np.asarray(form.jacobian[:, None, None] * (full[:, :n] - price[:, None, None] * square))
+            factor = form.potential[:, 0] * form.jacobian
+            return np.asarray((np.abs(factor) if absolute else factor)[:, None, None] * np.eye(n))
+        block = priced(form.potential, products[: form.potential.shape[1]], shares.young, absolute)
+        return np.asarray(form.jacobian[:, None, None] * block)
 
-    def _facet_potential(self, shares: "Shares") -> Array:
+    def _facet_potential(self, shares: "Shares", absolute: bool = False) -> Array:
         """The same for facets, on the cells that own them: (nc, (d+1) f, (d+1) f)."""
         form, products = self.form, self.reference.facet_products
         own = products.shape[2]
-        full = np.einsum("fm,mlj->flj", form.facet, products[: form.facet.shape[1]])
-        beyond = full[:, own:]
-        price = np.where(shares.facet_young > 0, 1 / np.where(shares.facet_young > 0, shares.facet_young, 1), 0.0)
-        block = full[:, :own] - price[:, None, None] * (beyond.swapaxes(1, 2) @ beyond)
+        block = priced(form.facet, products[: form.facet.shape[1]], shares.facet_young, absolute)
         block = np.where(form.dirichlet[:, None, None], 0.0, block * form.facet_measure[:, None, None])
         faces = form.mesh.dimension + 1
         result = np.zeros((len(form.mesh.cells), faces, own, faces, own))
@@ -264,6 +258,19 @@ def compose(
     mixed = mixed - sign * across
     upper = np.concatenate([outer + potentials[1], mixed.swapaxes(1, 2)], axis=2)
     return np.concatenate([upper, np.concatenate([mixed, inner], axis=2)], axis=1)
+
+
+def priced(modes: Array, products: Array, young: Array, absolute: bool) -> Array:
+    """P p - (beyond^T beyond) / z for multiplication by p, z = ``young``: what is kept, less the price of what is not.
+
+    modes : (n, m) of p; products : (m, l, q) tensors. With ``absolute`` a bound of all that enters.
+    """
+    own = products.shape[2]
+    size, tensors, sign = (np.abs(modes), magnitude(products), -1.0) if absolute else (modes, products, 1.0)
+    full = np.einsum("cm,mlj->clj", size, tensors)
+    beyond = full[:, own:]
+    price = np.where(young > 0, 1 / np.where(young > 0, young, 1), 0.0)
+    return np.asarray(full[:, :own] - sign * price[:, None, None] * (beyond.swapaxes(1, 2) @ beyond))
 
 
 def norms(matrices: Array) -> Array:
