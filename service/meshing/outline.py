@@ -137,8 +137,7 @@ def _exponents(
     found = transmission_exponents(
         stars.widths[several], kappa[several], stars.closed[several], stars.dirichlet[several]
     )
-    exponents = np.full((len(points), max(1, found.shape[1])), HIGHEST)
+    exponents = np.full((len(points), found.shape[1]), HIGHEST)
     exponents[:, 0] = single
-    exponents[stars.vertices[several]] = HIGHEST
-    exponents[stars.vertices[several], : found.shape[1]] = np.maximum(found, _SMALLEST_EXPONENT)
+    exponents[stars.vertices[several]] = np.maximum(found, _SMALLEST_EXPONENT)
     return exponents

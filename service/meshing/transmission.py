@@ -35,8 +35,8 @@ def transmission_exponents(
 ) -> NDArray[np.float64]:
     """All positive exponents α < 2 at each vertex with their multiplicities, ascending, (v, k).
 
-    Rows are filled up with 2. Exponents within 10⁻⁶ of an integer count as that integer: whether a
-    function is a polynomial in each sector is not a question of rounding.
+    Rows are filled up with 2, and there is one column at least. Exponents within 10⁻⁶ of an integer count
+    as that integer: whether a function is a polynomial in each sector is not a question of rounding.
 
     Parameters
     ----------
@@ -51,7 +51,7 @@ def transmission_exponents(
     target = np.where(fixed[:, 1], 0.0, np.pi / 2)
     target = np.where(target > first, target, target + np.pi)
     reached = _prufer_angle(np.full((len(first), 1), HIGHEST), first, widths, diffusion)[:, 0]
-    number = int(np.floor((reached - target) / np.pi).max(initial=-1.0)) + 1
+    number = int(np.floor((reached - target) / np.pi).max(initial=0.0)) + 1
     targets = target[:, None] + np.pi * np.arange(number)
     low, high = np.zeros_like(targets), np.full_like(targets, HIGHEST)
     found = _bisect(low, high, lambda alpha: _prufer_angle(alpha, first, widths, diffusion) < targets)
