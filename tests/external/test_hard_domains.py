@@ -97,10 +97,12 @@ CORNER_CASES = {
 }
 
 
+@pytest.mark.parametrize("tolerance", [TOLERANCE, pytest.param(1e-6, marks=pytest.mark.slow)])
 @pytest.mark.parametrize("name", CORNER_CASES)
-def test_corner_of_359_degrees(name: str) -> None:
+def test_corner_of_359_degrees(name: str, tolerance: float) -> None:
+    """To a millionth too, where the mesh must go down to a billionth of the size and less: exponents 1/2 and 1/4."""
     boundary, constant = CORNER_CASES[name]
-    enclosure(ask(polygon(notched(359)), boundary, TOLERANCE), constant, TOLERANCE)
+    enclosure(ask(polygon(notched(359)), boundary, tolerance), constant, tolerance)
 
 
 PENTAGON: Ring = [(0, 0), (2, 0), (3, 1), (1, 2), (0, 1)]

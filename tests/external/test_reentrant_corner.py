@@ -5,16 +5,14 @@ Sources: lambda_1 = 9.6397238440219, Trefethen and Betcke, Contemp. Math. 412 (2
 """
 
 import time
-from dataclasses import replace
-from functools import partial
 
 import mpmath
 import pytest
 from asking import ALL_ROUND, along, ask, enclosure, held, polygon
 
 from service.bounds.refine import Budget, enclose
-from service.constants.base import Question
 from service.constants.registry import CONSTANTS
+from service.forms.form import Pencil, laplace
 from service.meshing.generate import mesh_domain
 from service.meshing.mesh import Mesh
 from service.meshing.refine import refine
@@ -39,26 +37,22 @@ def test_first_eigenvalue_of_the_l_shape(tolerance: float) -> None:
         assert value - unit <= largest
 
 
-def question(boundary: list[dict[str, object]]) -> Question:
-    inputs = {"problem": {"domain": {"shape": polygon(L_SHAPE)}, "boundary": boundary}}
-    asked = CONSTANTS["friedrichs"].ask(read_request(inputs, CONSTANTS))
-    assert isinstance(asked, Question)
-    return asked
-
-
-def _mesh(asked: Question, size: float) -> Mesh:
-    return mesh_domain(asked.domain, size=size, target=1e-8)
-
-
 def test_third_eigenvalue_of_the_l_shape() -> None:
     """Counted rightly behind two singular ones, and enclosed to a millionth of the constant."""
-    asked = replace(question(ALL_ROUND), index=3)
+    inputs = {"problem": {"domain": {"shape": polygon(L_SHAPE)}, "boundary": ALL_ROUND}}
+    domain = read_request(inputs, CONSTANTS).domain
+
+    def mesh_at(size: float) -> Mesh:
+        return mesh_domain(domain, size=size, target=1e-8)
+
+    def pencil_on(mesh: Mesh) -> Pencil:
+        return laplace(mesh, mesh.part >= 0)
+
     budget = Budget(1.9e-6, time.monotonic() + 60, 2_000_000)
-    steps = list(enclose(partial(_mesh, asked), refine, asked.pencil, asked.index, budget))
-    value = steps[-1].enclosure.inverse_root(steps[-1].mesh.unit)
+    last = list(enclose(mesh_at, refine, pencil_on, 3, budget))[-1]
     with mpmath.workdps(40):
         exact = 1 / mpmath.sqrt(2 * mpmath.pi**2)
-        lower, upper = mpmath.mpf(value.lower), mpmath.mpf(value.upper)
+        upper, lower = (last.mesh.unit / mpmath.sqrt(end) for end in (last.enclosure.lower, last.enclosure.upper))
         assert lower <= exact <= upper
         assert (upper - lower) / upper <= 1e-6
 
@@ -69,3 +63,19 @@ def test_free_re_entrant_sides_make_the_constant_larger() -> None:
     some = enclosure(ask(polygon(L_SHAPE), outer, 1e-5), "friedrichs", 1e-5)
     every = enclosure(ask(polygon(L_SHAPE), ALL_ROUND, 1e-5), "friedrichs", 1e-5)
     assert every[1] < some[0]
+
+
+MIXED = {
+    "one re-entrant side": along((0, 0), (0, -1)),
+    "both re-entrant sides": along((-1, 0), (0, 0), (0, -1)),
+    "an outer side": along((1, -1), (1, 1)),
+}
+
+
+@pytest.mark.parametrize("name", MIXED)
+def test_l_shape_held_on_some_sides_to_a_millionth(name: str) -> None:
+    """The singularity at the corner has the exponent 1/3 where one of its sides is held, else 2/3."""
+    answer = ask(polygon(L_SHAPE), held(MIXED[name]), 1e-6)
+    lower, _ = enclosure(answer, "friedrichs", 1e-6)
+    every = enclosure(ask(polygon(L_SHAPE), ALL_ROUND, 1e-3), "friedrichs", 1e-3)
+    assert every[1] < lower
