@@ -32,6 +32,21 @@ def test_gaps_outside_the_domain_do_not_matter():
     assert sizes_of(notched(359)).min() > 0.49
 
 
+@pytest.mark.parametrize("turned_over", [False, True])
+def test_gaps_on_both_sides_of_interfaces_ask_for_small_elements(turned_over):
+    """A point of an interface 0.01 from a wall, one 0.002 from another interface; a hole 0.004 from one."""
+    shape = domain(SQUARE, square_hole(0.4, 0.7, 0.1))
+    inner = [(0.01, 0.2), (0.2, 0.2), (0.2, 0.4), (0.202, 0.3), (0.4, 0.2), (0.4, 0.4), (0.2, 0.804), (0.6, 0.804)]
+    points = np.vstack([shape.points, inner])
+    interfaces = np.array([[8, 9], [9, 10], [10, 8], [11, 12], [12, 13], [13, 11], [14, 15]])
+    if turned_over:
+        interfaces = interfaces[:, ::-1]
+    sizes = vertex_sizes(points, shape.edges, 0.5, interfaces)
+    assert sizes[[8, 11]] == pytest.approx([0.01, 0.002])
+    assert sizes[[5, 6]] == pytest.approx([0.004, 0.004])
+    assert (sizes[[9, 10, 12, 13]] > 0.09).all()
+
+
 def test_the_size_function_is_the_minimum_of_cones():
     generator = np.random.default_rng(3)
     points, wanted = generator.uniform(size=(50, 2)), 10.0 ** generator.uniform(-4, 0, size=50)

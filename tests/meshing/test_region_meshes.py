@@ -25,9 +25,10 @@ from region_shapes import (
 from test_mesh_determinism import fingerprint
 
 from service.errors import ComputationError
+from service.meshing.cover import check_cover
 from service.meshing.generate import displacements, mesh_domain
 from service.meshing.grade import grade
-from service.meshing.outline import MOST_LAYERS
+from service.meshing.outline import MOST_LAYERS, describe
 from service.meshing.quality import flatness, longest_edges
 from service.meshing.refine import refine
 from service.meshing.sizing import size_function, subdivide
@@ -281,6 +282,18 @@ def test_outlines_without_interfaces_are_noticed():
     other = replace(shape.regions[0], rings=(shape.regions[0].rings[0] * [1 + 1e-6, 1],))
     with pytest.raises(ValueError, match="'left' does not consist of interfaces"):
         mesh_domain(replace(shape, regions=(other,)), size=0.3, target=1e-3)
+
+
+def test_triangles_across_an_interface_are_noticed():
+    """Two triangles of the square, which lack the other diagonal."""
+    shape = replace(domain(SQUARE), interfaces=np.array([[1, 3]]))
+    outline = describe(shape, 0.5, None)
+    cells = np.array([[0, 1, 2], [0, 2, 3]])
+    spans, error = base_spans(outline.points, cells, np.zeros((4, 2)))
+    base = Triangulation(outline.points, cells, spans, error, shape.edges, shape.part)
+    check_cover(base, outline, np.array([[2, 0]]))
+    with pytest.raises(ComputationError, match="outlines of regions"):
+        check_cover(base, outline, outline.interfaces)
 
 
 def test_points_without_use_are_refused():
