@@ -100,8 +100,8 @@ def counted_bound(pencil: Pencil, estimate: float, index: int, order: int, width
         else:
             low = middle
     # What the proof sets aside for rounding may be more than this distance: then step back.
-    for back in range(5):
-        t = value(high + 1.5 * back)
+    for back in range(8):
+        t = value(min(high + 2.0 * back, 0.0))
         if proves(pencil.at(t), order, index - 1, scale_of(pencil, t)):
             return t
     return -math.inf

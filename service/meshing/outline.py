@@ -7,6 +7,7 @@ from functools import cached_property
 import numpy as np
 from numpy.typing import NDArray
 
+from service.errors import ComputationError
 from service.meshing.corners import interior_angles, layer_counts, singular_exponents
 from service.meshing.normalise import Frame, normalise, on_hosts
 from service.meshing.regions import membership
@@ -83,11 +84,15 @@ def describe(domain: PlaneDomain, size: float, diffusion: Diffusion | None) -> O
 
     Raises
     ------
+    ComputationError
+        ``boundary-touches-itself`` when two loops share a vertex.
     ValueError
         When the edges do not form closed loops, a point is not in use, or a diffusion is not positive.
     """
     everyone = np.unique(domain.edges)
     if not all(np.array_equal(np.sort(end), everyone) for end in domain.edges.T):
+        if len(np.unique(domain.edges[:, 0])) < len(domain.edges):
+            raise touching_loops(domain)
         raise ValueError("every point of the boundary must start one edge and end one")
     if len(np.union1d(everyone, domain.interfaces)) != len(domain.points):
         raise ValueError("every point must be used by an edge or an interface")
@@ -107,6 +112,18 @@ def describe(domain: PlaneDomain, size: float, diffusion: Diffusion | None) -> O
         wanted=wanted,
         scales=local_scales(points, domain.edges, dirichlet),
         exponents=_exponents(domain, frame, wanted, dirichlet, diffusion),
+    )
+
+
+def touching_loops(domain: PlaneDomain) -> ComputationError:
+    """The refusal of a boundary that passes one point twice: no mesh is graded for such points yet."""
+    numbers, times = np.unique(domain.edges[:, 0], return_counts=True)
+    x, y = domain.points[numbers[times > 1][0]]
+    return ComputationError(
+        "boundary-touches-itself",
+        "The boundary touches itself",
+        f"Two pieces of the boundary meet in the point ({x:.9g}, {y:.9g}). Such points are not meshed in this "
+        "version: move one of the pieces by a small distance, or join them along an edge.",
     )
 
 
