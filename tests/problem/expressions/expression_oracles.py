@@ -3,9 +3,16 @@
 import math
 
 import mpmath
+from hypothesis import HealthCheck, settings
 from hypothesis import strategies as st
 
 from service.problem.expressions.expression import Expression
+
+
+def examples(number):
+    """So many examples, however slow the machine and however many have no value where they are tried."""
+    unhurried = [HealthCheck.too_slow, HealthCheck.filter_too_much]
+    return settings(max_examples=number, deadline=None, suppress_health_check=unhurried)
 
 
 class UndefinedError(Exception):

@@ -5,8 +5,8 @@ import time
 import mpmath
 import numpy as np
 import pytest
-from expression_oracles import COORDINATES, Multiprecision, UndefinedError, texts, true_value
-from hypothesis import assume, given, settings
+from expression_oracles import COORDINATES, Multiprecision, UndefinedError, examples, texts, true_value
+from hypothesis import assume, given
 from hypothesis import strategies as st
 
 from service.problem.expressions.errors import DerivativeError
@@ -55,7 +55,7 @@ def test_derivative_is_simplified(text, derivative):
 
 
 @given(texts(kinks=False), COORDINATES, COORDINATES, st.sampled_from("xy"))
-@settings(max_examples=700, deadline=None)
+@examples(250)
 def test_derivative_is_the_limit_of_difference_quotients(text, x, y, variable):
     expression = parse(text)
     try:
@@ -83,7 +83,7 @@ def test_derivative_is_the_limit_of_difference_quotients(text, x, y, variable):
 
 
 @given(texts(), COORDINATES, COORDINATES, st.sampled_from("xy"), st.sampled_from([1e-3, 0.5, 3.0]))
-@settings(max_examples=700, deadline=None)
+@examples(250)
 def test_mean_slope_lies_in_the_enclosure_of_the_weak_derivative(text, x, y, variable, width):
     """Also across kinks: a Lipschitz function is the integral of its weak derivative."""
     expression = parse(text)
@@ -111,8 +111,8 @@ def test_kinks_take_every_slope_between_the_one_sided_ones():
     assert (box.lower.tolist(), box.upper.tolist()) == ([-1, 0, 1], [-1, 0, 1])
     across = enclosures(parse("max(3*x, -x)").derivative("x"), np.array([-1.0]), np.array([1.0]))
     assert (across.lower, across.upper) == (-1, 3)
-    slopes = values(parse("min(x, 2*x, 1)").derivative("x"), np.array([[-1.0, 0.0, 0.2, 3.0]]))
-    assert slopes.tolist() == [2, 1.5, 1, 0]
+    slopes = values(parse("min(x, 2*x, 1)").derivative("x"), np.array([[-1.0, 0.0, 0.2, 0.7, 3.0]]))
+    assert slopes.tolist() == [2, 1.5, 1, 1, 0]
 
 
 def test_the_branch_not_taken_may_be_undefined():
@@ -149,11 +149,11 @@ def test_divergence_of_a_rotated_gradient_vanishes():
 
 
 def test_long_products_and_deep_chains_have_short_derivatives():
-    start = time.perf_counter()
+    start = time.process_time()
     product = parse("*".join(f"(x-{n})" for n in range(150)))
     slope = product.derivative("x").derivative("x")
     deep = parse("sin(" * 45 + "x" + ")" * 45).derivative("x").derivative("x")
     assert len(slope.text()) > 1000
     assert np.isfinite(values(deep, np.array([0.3])))
     assert values(slope, np.array([0.5])) != 0
-    assert time.perf_counter() - start < 3
+    assert time.process_time() - start < 3

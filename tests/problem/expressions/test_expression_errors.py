@@ -3,7 +3,8 @@
 import time
 
 import pytest
-from hypothesis import given, settings
+from expression_oracles import examples
+from hypothesis import given
 from hypothesis import strategies as st
 
 from service.problem.expressions.errors import ExpressionError
@@ -102,12 +103,12 @@ NAMES = (
     ],
 )
 def test_refused_with_the_character_and_the_reason(text, position, sentence):
-    start = time.perf_counter()
+    start = time.process_time()
     with pytest.raises(ExpressionError) as caught:
         parse(text)
     assert (caught.value.position, caught.value.sentence) == (position, sentence)
     assert str(caught.value) == f"At character {position + 1}: {sentence}"
-    assert time.perf_counter() - start < 0.5
+    assert time.process_time() - start < 0.5
 
 
 @pytest.mark.parametrize(
@@ -126,7 +127,7 @@ def outcome(text):
 
 
 @given(st.text(st.sampled_from("xy12.e+-*/^(), sinmaxlog_\t"), max_size=40))
-@settings(max_examples=600, deadline=None)
+@examples(250)
 def test_any_text_is_read_or_refused_at_one_of_its_characters(text):
     found = outcome(text)
     if isinstance(found, ExpressionError):
@@ -136,7 +137,7 @@ def test_any_text_is_read_or_refused_at_one_of_its_characters(text):
 
 
 @given(st.text(max_size=30))
-@settings(max_examples=500, deadline=None)
+@examples(250)
 def test_any_unicode_text_is_read_or_refused(text):
     found = outcome(text)
     assert isinstance(found, Expression) or 0 <= found.position <= len(text)
