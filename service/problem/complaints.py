@@ -17,9 +17,7 @@ MOST_COMPARED = 1000
 """Most rings that are compared with a misplaced one in the search for a point to show."""
 
 
-def report_contacts(
-    shape: Shape, rings: list[PlacedRing], web: Web, contacts: Contacts, exponent: int
-) -> bool:
+def report_contacts(shape: Shape, rings: list[PlacedRing], web: Web, contacts: Contacts, exponent: int) -> bool:
     """Record everything in the contacts that forbids a domain; whether there was nothing.
 
     rings : the rings of the web, in its order.
@@ -69,9 +67,7 @@ def report_contacts(
                 other=vertex(int(meetings.other[index])).pointer,
                 resolution=resolution,
             )
-            vertex(int(meetings.edge[index])).refuse(
-                text + (and_more(len(chosen)) if count == MOST_PLACES else "")
-            )
+            vertex(int(meetings.edge[index])).refuse(text + (and_more(len(chosen)) if count == MOST_PLACES else ""))
     quiet = all(len(meetings.edge) == 0 for meetings, _ in kinds)
     if quiet and not contacts.complete:
         shape.place.refuse(

@@ -106,9 +106,7 @@ def _numbers(points: Points, coordinates: Points) -> Indices:
     """The numbers of vertices given by their coordinates."""
     known = points[:, 0] + 1j * points[:, 1]
     order = np.argsort(known)
-    found: NDArray[np.int64] = order[
-        np.searchsorted(known, coordinates[:, 0] + 1j * coordinates[:, 1], sorter=order)
-    ]
+    found: NDArray[np.int64] = order[np.searchsorted(known, coordinates[:, 0] + 1j * coordinates[:, 1], sorter=order)]
     return found
 
 

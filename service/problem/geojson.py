@@ -28,9 +28,7 @@ def read_geometry(value: object, place: Place) -> Shape | None:
         return _read_ring(value, place, altitudes)
 
     def polygon(value: object, place: Place) -> Piece | None:
-        rings = read_list(
-            value, place, lambda value, place: _read_ring(value, place, altitudes), 1, MOST_RINGS
-        )
+        rings = read_list(value, place, lambda value, place: _read_ring(value, place, altitudes), 1, MOST_RINGS)
         return None if rings is None else Piece(rings[0], tuple(rings[1:]))
 
     if kind == "Polygon":

@@ -105,9 +105,7 @@ def read_alternative(value: object, place: Place, table: Mapping[str, Reader[T]]
     return table[chosen[0]](value[chosen[0]], place.at(chosen[0])) if chosen else None
 
 
-def read_list(
-    value: object, place: Place, read: Reader[T], fewest: int = 0, most: int | None = None
-) -> list[T] | None:
+def read_list(value: object, place: Place, read: Reader[T], fewest: int = 0, most: int | None = None) -> list[T] | None:
     """An array of bounded length, each element by the same reader; ``None`` if any was refused."""
     if not check_length(value, place, fewest, most) or not isinstance(value, list):
         return None

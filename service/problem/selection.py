@@ -189,9 +189,7 @@ def merged(edges: Edges, spans: Spans) -> Spans:
     covered = np.cumsum(change[order])
     first = order[(covered == 1) & (change[order] == 1)]
     last = order[covered == 0] - count
-    return Spans(
-        spans.edge[first], spans.low[first], spans.high[last], spans.low_point[first], spans.high_point[last]
-    )
+    return Spans(spans.edge[first], spans.low[first], spans.high[last], spans.low_point[first], spans.high_point[last])
 
 
 def joined(selections: list[Spans]) -> Spans:

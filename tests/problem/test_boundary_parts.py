@@ -69,9 +69,7 @@ def test_a_selector_within_the_tolerance_is_snapped():
     domain = read(WIDE, [part("it", near)]).domain
     assert [0.5, 0] in domain.points.tolist()
     assert [1.5, 0] in domain.points.tolist()
-    assert pointers(inputs(WIDE, [part("it", {"segment": [[0.5, 3e-9], [1.5, 3e-9]]})])) == [
-        "/problem/boundary/0/on"
-    ]
+    assert pointers(inputs(WIDE, [part("it", {"segment": [[0.5, 3e-9], [1.5, 3e-9]]})])) == ["/problem/boundary/0/on"]
 
 
 def test_an_end_near_a_vertex_is_the_vertex():

@@ -88,9 +88,7 @@ def test_holes_are_accepted_exactly_where_they_leave_a_domain(outer, holes):
         all(region.is_valid for region in (whole, *cut))
         and all(whole.covers(hole) for hole in cut)
         and not any(shapely.relate_pattern(*pair, "T********") for pair in combinations(cut, 2))
-        and not any(
-            one.boundary.intersection(two.boundary).length for one, two in combinations([whole, *cut], 2)
-        )
+        and not any(one.boundary.intersection(two.boundary).length for one, two in combinations([whole, *cut], 2))
     )
     event("fine" if fine else "faulty")
     document = inputs(polygon(outer, *holes))

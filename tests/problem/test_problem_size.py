@@ -163,9 +163,7 @@ def test_selectors_that_come_near_too_much_are_refused_with_the_limit():
 @pytest.mark.slow
 def test_many_parts_are_laid_out():
     ring = blob(MOST // 10)
-    parts = [
-        part(f"{index}", {"segment": ring[[10 * index, 10 * index + 1]].tolist()}) for index in range(999)
-    ]
+    parts = [part(f"{index}", {"segment": ring[[10 * index, 10 * index + 1]].tolist()}) for index in range(999)]
     assert timed(inputs(polygon(ring.tolist()), [*parts, part("rest", "remainder")])) == []
 
 
