@@ -95,9 +95,7 @@ def boxes(start: Points, end: Points, margin: float) -> NDArray[np.object_]:
     return found
 
 
-def box_pairs(
-    tree: shapely.STRtree, queries: NDArray[np.object_], ascending: bool = False
-) -> Iterator[BoxPairs]:
+def box_pairs(tree: shapely.STRtree, queries: NDArray[np.object_], ascending: bool = False) -> Iterator[BoxPairs]:
     """Pairs (query, box of the tree) that meet, in batches of bounded size.
 
     ascending : whether to keep only the pairs in which the first number is the smaller one.
@@ -126,7 +124,7 @@ def near_pairs(start: Points, end: Points, reach: float, resolution: float) -> N
     near = crossings = total = 0
     for batch in box_pairs(shapely.STRtree(around), around, ascending=True):
         first, second, total = batch.first, batch.second, batch.total
-        rows, gaps, crossing = _near(start[first], end[first], start[second], end[second], reach, resolution)
+        rows, gaps, crossing = compare(start[first], end[first], start[second], end[second], reach, resolution)
         found.append((first[rows], second[rows], gaps, crossing))
         near, crossings = near + len(rows), crossings + int(crossing.sum())
         if total > MOST_PAIRS or near > MOST_NEAR or crossings > ENOUGH_CROSSINGS:
@@ -137,7 +135,7 @@ def near_pairs(start: Points, end: Points, reach: float, resolution: float) -> N
     return NearPairs(first[order], second[order], gaps[order], crossing[order], complete)
 
 
-def _near(
+def compare(
     a: Points, b: Points, c: Points, d: Points, reach: float, resolution: float
 ) -> tuple[Indices, NDArray[np.float64], Mask]:
     """Rows where the segments ab and cd come within reach, their end distances, whether they cross."""
