@@ -134,7 +134,7 @@ def test_duals_of_trial_functions(order: int, shift: float) -> None:
 
 @pytest.mark.parametrize("order", [2, 4])
 def test_duals_satisfy_what_defines_them(order: int) -> None:
-    """<w, (grad v, v)> = B(u, v) for every v, so |w|^2 >= B(u, v)^2 / A(v); near equality for an eigenfunction v = u."""
+    """<w, (grad v, v)> = B(u, v) for every v, so |w|^2 >= B(u, v)^2 / A(v); nearly equal for an eigenfunction u = v."""
     mesh = random_square(40, 4)
     pencil = laplace(mesh, everywhere(mesh)).shifted(3.0)
     trial = TrialSpace(pencil, order)

@@ -67,9 +67,10 @@ def test_nothing_false_is_proved(name: str, order: int) -> None:
         assert not proves(pencil.at(t), order, most, scale_of(pencil, t))
 
 
-@pytest.mark.parametrize(("order", "gap"), [(1, 6e-2), (2, 3e-3), (3, 2e-4), (4, 2e-5)])
+@pytest.mark.parametrize(("order", "gap"), [(1, 6e-2), (2, 3e-3), (3, 2e-4), (4, 1e-4)])
 @pytest.mark.parametrize("name", HELD)
 def test_bounds_are_below_the_closed_form_and_close(name: str, order: int, gap: float) -> None:
+    """As close as the order allows on 128 cells; from order 4 on what is set aside for rounding decides."""
     pencil, exact = square_pencil(square(8), name)
     for k in (1, 2, 4) if name == "held" else (2, 3, 4):
         bound = counted_bound(pencil, exact[k - 1] * (1 + 1e-10), k, order, 1e-6)
