@@ -32,8 +32,9 @@ class Region:
     """A named piece of the plane, in which coefficients differ from those elsewhere.
 
     name : as in the problem document.
-    rings : outer ring and holes, (k, 2) vertices each in the user's length unit, not closed; the region
-        may reach beyond the domain.
+    rings : outer ring and holes, (k, 2) vertices each in the user's length unit, not closed, counter-clockwise
+        outside and clockwise inside; the region may reach beyond the domain. The rings pass every point of
+        the domain that lies on them, so that the interfaces are parts of them bit by bit.
     """
 
     name: str
@@ -73,10 +74,14 @@ class PlaneDomain:
         may jump. Segments and edges meet at common points only. A point that no edge uses is inside the
         domain.
     regions : the named regions. The part of their boundaries that is inside the domain consists of
-        interfaces.
+        interfaces. Corners of regions keep every bit unless they lie, to within the tolerance, on the boundary
+        or on an earlier corner; sides that pass a point within the tolerance are led through it.
     hosts : (n, 2) the two points between which each point lies: for a vertex that divides a straight edge
-        the ends of that edge, for every other point itself twice. Such a vertex is A + t (B - A) for the t nearest
-        to its coordinates, on the edge exactly and not only to the last bit. Empty: no such vertices.
+        the ends of that edge; for a crossing of two sides of regions the ends of the piece of one of them
+        that stays straight there (the first one stated, if both its ends are points of the domain that divide
+        nothing; else the other one, if its are); for every other point itself twice. Such a vertex is
+        A + t (B - A) for the t nearest to its coordinates, on the edge exactly and not only to the last bit.
+        The ends lie between no other points. Empty: no such vertices.
     """
 
     points: NDArray[np.float64]

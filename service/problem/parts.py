@@ -49,7 +49,7 @@ def lay_out(
             sound &= _own(pieces, owner, parts, number, edges.tolerance, outline.exponent)
     if not sound:
         return None
-    named = [BoundaryPart(part.name, part.condition) for part in parts]
+    named = [BoundaryPart(part.name, part.condition, part.exchange) for part in parts]
     warnings: tuple[str, ...] = ()
     free = owner < 0
     rest = [number for number, part in enumerate(parts) if isinstance(part.selector, Remainder)]

@@ -33,6 +33,11 @@ class Piecewise(Generic[T]):
         return len(self.entries) == 1
 
     @property
+    def names(self) -> tuple[str | None, ...]:
+        """The names of the entries in their order, ``None`` last."""
+        return tuple(name for name, _ in self.entries)
+
+    @property
     def values(self) -> tuple[T, ...]:
         """The values in the order of the entries, the one for everywhere else last."""
         return tuple(value for _, value in self.entries)

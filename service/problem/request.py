@@ -6,32 +6,17 @@ from functools import partial
 from typing import Any
 
 from service.errors import ProblemError
-from service.problem.boundary import PartText, part_document, read_boundary
+from service.problem.checks import check_coefficients
 from service.problem.domain import PlaneDomain
+from service.problem.interfaces import with_regions
 from service.problem.operator import LAPLACIAN, PLAIN, Norm, Operator
 from service.problem.outline import outline_of
 from service.problem.parts import lay_out
-from service.problem.reading import (
-    Place,
-    read_list,
-    read_members,
-    read_number,
-    read_text,
-    read_whole_number,
-)
-from service.problem.rings import Shape
-from service.problem.shapes import read_shape, shape_document
+from service.problem.reading import Place, read_list, read_members, read_number, read_whole_number
+from service.problem.regions import region_outlines
+from service.problem.selection import edges_of
+from service.problem.statement import Statement, read_statement, statement_document
 from service.processes.base import Limits
-
-LONGEST_TITLE = 200
-TITLE_PATTERN = r"[^\u0000-\u001f\u007f]*"
-
-LONGEST_UNIT = 20
-UNIT_PATTERN = r"[A-Za-z0-9%_.*/^+'()\[\]{}-]+"
-"""The characters of unit codes as UCUM writes them, for example m, km, [ft_i]."""
-
-DEFAULT_LENGTH_UNIT = "m"
-DEFAULT_TIME_UNIT = "s"
 
 DEFAULT_TOLERANCE = 1e-3
 SMALLEST_TOLERANCE = 1e-10
@@ -93,44 +78,59 @@ def canonical(inputs: object, known: Collection[str], caps: Limits = CAPS) -> di
     return _read(inputs, known, caps)[1]
 
 
-@dataclass(frozen=True)
-class _Problem:
-    """The member ``problem`` as it is written."""
-
-    title: str
-    length_unit: str
-    time_unit: str
-    shape: Shape | None
-    boundary: tuple[PartText, ...] | None
-
-
 def _read(inputs: object, known: Collection[str], caps: Limits) -> tuple[Request, dict[str, Any]]:
     place = Place()
     members = read_members(inputs, place, ("problem",), ("constants", "tolerance", "limits"))
     if members is None:
         raise ProblemError(*place.faults)
-    problem = members.read("problem", _read_problem)
+    statement = members.read("problem", read_statement)
     constants = members.read("constants", partial(_read_constants, known=known))
     tolerance = members.get("tolerance", _read_tolerance, DEFAULT_TOLERANCE)
     limits = members.get("limits", partial(_read_limits, caps=caps), default_limits(caps))
-    outline = outline_of(problem.shape) if problem is not None and problem.shape is not None else None
-    laid = None
-    if problem is not None and problem.boundary is not None and outline is not None and _domain_sound(place):
-        laid = lay_out(outline, problem.boundary, problem.length_unit)
-    if place.faults or problem is None or problem.shape is None or problem.boundary is None or laid is None:
+    laid = None if statement is None else _lay_out(statement, place)
+    if place.faults or statement is None or statement.shape is None or laid is None:
         raise ProblemError(*place.faults)
     domain, warnings = laid
     request = Request(
-        title=problem.title,
-        length_unit=problem.length_unit,
-        time_unit=problem.time_unit,
+        title=statement.title,
+        length_unit=statement.length_unit,
+        time_unit=statement.time_unit,
         domain=domain,
         constants=constants,
         tolerance=tolerance,
         limits=limits,
         warnings=warnings,
+        operator=statement.operator,
+        norm=statement.norm,
     )
-    return request, _document(request, problem.shape, problem.boundary)
+    return request, _document(request, statement_document(statement, statement.shape))
+
+
+def _lay_out(statement: Statement, place: Place) -> tuple[PlaneDomain, tuple[str, ...]] | None:
+    """The domain with its boundary parts and regions, and warnings; ``None`` after faults have been recorded.
+
+    Coefficients are checked on it as soon as everything else is sound.
+    """
+    outline = None if statement.shape is None else outline_of(statement.shape)
+    regions = None if statement.regions is None else region_outlines(statement.regions)
+    if outline is None or regions is None or statement.boundary is None or not _domain_sound(place):
+        return None
+    laid = lay_out(outline, statement.boundary, statement.length_unit)
+    if laid is None:
+        return None
+    domain = with_regions(laid[0], regions, outline.exponent, edges_of(outline).tolerance) if regions else laid[0]
+    if domain is None:
+        return None
+    if not place.faults and _has_coefficients(statement):
+        here = place.at("problem")
+        check_coefficients(statement.operator, domain, outline.exponent, statement.written, here)
+    return domain, laid[1]
+
+
+def _has_coefficients(statement: Statement) -> bool:
+    """Whether there is anything to check beyond the Laplacian."""
+    exchanges = [part.exchange for part in statement.boundary or () if part.exchange is not None]
+    return statement.operator != LAPLACIAN or bool(exchanges)
 
 
 def _domain_sound(place: Place) -> bool:
@@ -138,50 +138,14 @@ def _domain_sound(place: Place) -> bool:
     return not any(fault.pointer.startswith("/problem/domain") for fault in place.faults)
 
 
-def _document(request: Request, shape: Shape, boundary: tuple[PartText, ...]) -> dict[str, Any]:
+def _document(request: Request, problem: dict[str, Any]) -> dict[str, Any]:
     chosen = {} if request.constants is None else {"constants": list(request.constants)}
     return {
-        "problem": {
-            "title": request.title,
-            "length_unit": request.length_unit,
-            "time_unit": request.time_unit,
-            "domain": {"shape": shape_document(shape)},
-            "boundary": [part_document(part) for part in boundary],
-        },
+        "problem": problem,
         **chosen,
         "tolerance": request.tolerance,
         "limits": {"seconds": request.limits.seconds, "unknowns": request.limits.unknowns},
     }
-
-
-def _read_problem(value: object, place: Place) -> _Problem | None:
-    members = read_members(value, place, ("domain",), ("title", "length_unit", "time_unit", "boundary"))
-    if members is None:
-        return None
-    boundary = members.read("boundary", read_boundary)
-    return _Problem(
-        title=members.get("title", _read_title, ""),
-        length_unit=members.get("length_unit", _read_unit, DEFAULT_LENGTH_UNIT),
-        time_unit=members.get("time_unit", _read_unit, DEFAULT_TIME_UNIT),
-        shape=members.read("domain", _read_domain),
-        boundary=boundary if "boundary" in members.values else (),
-    )
-
-
-def _read_domain(value: object, place: Place) -> Shape | None:
-    members = read_members(value, place, ("shape",))
-    return None if members is None else members.read("shape", read_shape)
-
-
-def _read_title(value: object, place: Place) -> str | None:
-    return read_text(value, place, LONGEST_TITLE, TITLE_PATTERN, "Must not have control characters.")
-
-
-def _read_unit(value: object, place: Place) -> str | None:
-    rule = (
-        "Must be a unit code such as m, km or [ft_i]: letters, digits and the signs % _ . * / ^ + - ' ()[]{}."
-    )
-    return read_text(value, place, LONGEST_UNIT, UNIT_PATTERN, rule)
 
 
 def _read_constants(value: object, place: Place, known: Collection[str]) -> tuple[str, ...] | None:

@@ -6,30 +6,32 @@ satisfy (rings that do not cross, selectors on the boundary) only the readers kn
 """
 
 from collections.abc import Collection
-from typing import Any
 
-from service.problem.boundary import CONDITIONS, LONGEST_NAME, MOST_PARTS, NAME_PATTERN
+from service.problem.boundary import CONDITIONS, MOST_PARTS
 from service.problem.positions import LARGEST_COORDINATE, MOST_POINTS, MOST_RINGS
+from service.problem.regions import MOST_REGIONS
 from service.problem.request import (
     CAPS,
-    DEFAULT_LENGTH_UNIT,
-    DEFAULT_TIME_UNIT,
     DEFAULT_TOLERANCE,
     LARGEST_TOLERANCE,
-    LONGEST_TITLE,
-    LONGEST_UNIT,
     MOST_CONSTANTS,
     SHORTEST_SECONDS,
     SMALLEST_TOLERANCE,
-    TITLE_PATTERN,
-    UNIT_PATTERN,
     default_limits,
 )
+from service.problem.schema_operator import norm_schema, operator_schema, scalar_schema
+from service.problem.schema_tools import JSON, array, closed_object, coordinate, name, point, text
 from service.problem.selectors import REMAINDER
 from service.problem.shapes import SMALLEST_SIZE
+from service.problem.statement import (
+    DEFAULT_LENGTH_UNIT,
+    DEFAULT_TIME_UNIT,
+    LONGEST_TITLE,
+    LONGEST_UNIT,
+    TITLE_PATTERN,
+    UNIT_PATTERN,
+)
 from service.processes.base import Limits
-
-JSON = dict[str, Any]
 
 EXAMPLE: JSON = {
     "title": "Channel with a pier",
@@ -85,19 +87,29 @@ def input_descriptions(known: Collection[str], caps: Limits = CAPS) -> dict[str,
 
 def problem_schema() -> JSON:
     """The problem document."""
-    return _object(
+    return closed_object(
         {
-            "title": _text(LONGEST_TITLE, TITLE_PATTERN, "A title for reports.", default=""),
-            "length_unit": _text(
+            "title": text(LONGEST_TITLE, TITLE_PATTERN, "A title for reports.", default=""),
+            "length_unit": text(
                 LONGEST_UNIT,
                 UNIT_PATTERN,
                 "Unit of all coordinates, as a UCUM code; a name only, nothing is converted.",
                 default=DEFAULT_LENGTH_UNIT,
             ),
-            "time_unit": _text(
-                LONGEST_UNIT, UNIT_PATTERN, "Unit of time, as a UCUM code.", default=DEFAULT_TIME_UNIT
+            "time_unit": text(LONGEST_UNIT, UNIT_PATTERN, "Unit of time, as a UCUM code.", default=DEFAULT_TIME_UNIT),
+            "domain": closed_object(
+                {
+                    "shape": shape_schema(),
+                    "regions": {
+                        **array(_region(), 0, MOST_REGIONS),
+                        "description": "Named regions in which coefficients differ; they may overlap, and reach "
+                        "beyond the domain.",
+                        "default": [],
+                    },
+                },
+                ("shape",),
+                "The domain.",
             ),
-            "domain": _object({"shape": shape_schema()}, ("shape",), "The domain."),
             "boundary": {
                 "type": "array",
                 "description": "Named boundary parts, without overlap. What no part selects is natural "
@@ -106,9 +118,11 @@ def problem_schema() -> JSON:
                 "maxItems": MOST_PARTS,
                 "default": [],
             },
+            "operator": operator_schema(),
+            "norm": norm_schema(),
         },
         ("domain",),
-        "A plane domain, its boundary parts and the conditions on them.",
+        "A plane domain, its boundary parts and the conditions on them, and the operator.",
         title="Problem document",
         example=EXAMPLE,
     )
@@ -120,10 +134,10 @@ def shape_schema() -> JSON:
         "title": "Shape",
         "description": "A bounded plane domain with straight edges. Rings have any orientation.",
         "oneOf": [
-            _object({"rectangle": _rectangle()}, ("rectangle",), "A rectangle with sides along the axes."),
-            _object({"polygon": _polygon()}, ("polygon",), "A polygon, with or without holes."),
+            closed_object({"rectangle": _rectangle()}, ("rectangle",), "A rectangle with sides along the axes."),
+            closed_object({"polygon": _polygon()}, ("polygon",), "A polygon, with or without holes."),
             _geojson("Polygon", _rings(closed=True, fewest=1)),
-            _geojson("MultiPolygon", _array(_rings(closed=True, fewest=1), 1, MOST_RINGS)),
+            _geojson("MultiPolygon", array(_rings(closed=True, fewest=1), 1, MOST_RINGS)),
         ],
     }
 
@@ -131,7 +145,7 @@ def shape_schema() -> JSON:
 def constants_schema(known: Collection[str]) -> JSON:
     """The list of constants."""
     return {
-        **_array({"type": "string", "enum": sorted(known)}, 1, MOST_CONSTANTS),
+        **array({"type": "string", "enum": sorted(known)}, 1, MOST_CONSTANTS),
         "title": "Constants",
         "description": "Ids of constants, each at most once.",
         "uniqueItems": True,
@@ -155,7 +169,7 @@ def tolerance_schema() -> JSON:
 def limits_schema(caps: Limits = CAPS) -> JSON:
     """The limits of a run."""
     defaults = default_limits(caps)
-    return _object(
+    return closed_object(
         {
             "seconds": {
                 "type": "number",
@@ -179,57 +193,23 @@ def limits_schema(caps: Limits = CAPS) -> JSON:
     )
 
 
-def _object(properties: JSON, required: tuple[str, ...], description: str, **more: Any) -> JSON:
-    needed = {"required": list(required)} if required else {}
-    return {
-        **more,
-        "description": description,
-        "type": "object",
-        "properties": properties,
-        **needed,
-        "additionalProperties": False,
-    }
-
-
-def _array(items: JSON, fewest: int, most: int) -> JSON:
-    return {"type": "array", "items": items, "minItems": fewest, "maxItems": most}
-
-
-def _text(longest: int, pattern: str, description: str, **more: Any) -> JSON:
-    return {
-        "type": "string",
-        "description": description,
-        "maxLength": longest,
-        "pattern": f"^(?:{pattern})$",
-        **more,
-    }
-
-
-def _coordinate() -> JSON:
-    return {"type": "number", "minimum": -LARGEST_COORDINATE, "maximum": LARGEST_COORDINATE}
-
-
-def _point() -> JSON:
-    return _array(_coordinate(), 2, 2)
-
-
 def _rings(closed: bool, fewest: int) -> JSON:
     """Rings of positions; closed ones follow RFC 7946, section 3.1.6, and may carry an altitude."""
-    position = _array(_coordinate(), 2, 3) if closed else _point()
-    return _array(_array(position, 4 if closed else 3, MOST_POINTS + 1), fewest, MOST_RINGS)
+    position = array(coordinate(), 2, 3) if closed else point()
+    return array(array(position, 4 if closed else 3, MOST_POINTS + 1), fewest, MOST_RINGS)
 
 
 def _rectangle() -> JSON:
     side = {"type": "number", "minimum": SMALLEST_SIZE, "maximum": LARGEST_COORDINATE}
-    size = {**_array(side, 2, 2), "description": "Width and height."}
-    corner = {**_point(), "description": "The corner with the smallest coordinates."}
-    return _object({"corner": corner, "size": size}, ("corner", "size"), "Corner and size.")
+    size = {**array(side, 2, 2), "description": "Width and height."}
+    corner = {**point(), "description": "The corner with the smallest coordinates."}
+    return closed_object({"corner": corner, "size": size}, ("corner", "size"), "Corner and size.")
 
 
 def _polygon() -> JSON:
     holes = _rings(closed=False, fewest=0)
     outer = {**holes["items"], "description": "Vertices; the first may be repeated at the end or not."}
-    return _object(
+    return closed_object(
         {"outer": outer, "holes": {**holes, "description": "Rings inside the outer one.", "default": []}},
         ("outer",),
         "Outer ring and holes.",
@@ -237,8 +217,8 @@ def _polygon() -> JSON:
 
 
 def _geojson(kind: str, coordinates: JSON) -> JSON:
-    box = [_array(_coordinate(), size, size) for size in (4, 6)]
-    return _object(
+    box = [array(coordinate(), size, size) for size in (4, 6)]
+    return closed_object(
         {
             "type": {"type": "string", "enum": [kind]},
             "coordinates": coordinates,
@@ -250,31 +230,41 @@ def _geojson(kind: str, coordinates: JSON) -> JSON:
 
 
 def _part() -> JSON:
-    segment = _array(_point(), 2, 2)
+    segment = array(point(), 2, 2)
     selectors = (
         ("segment", segment, "What lies on the segment between two points."),
-        ("polyline", _array(_point(), 2, MOST_POINTS), "What lies on a chain of segments."),
+        ("polyline", array(point(), 2, MOST_POINTS), "What lies on a chain of segments."),
         ("box", segment, "What lies in the closed box [[xmin, ymin], [xmax, ymax]]."),
     )
-    choices = [_object({name: form}, (name,), description) for name, form, description in selectors]
+    choices = [closed_object({name: form}, (name,), description) for name, form, description in selectors]
     everything_else = {
         "type": "string",
         "description": "What no other part selects.",
         "enum": [REMAINDER],
     }
-    return _object(
-        {
-            "name": _text(LONGEST_NAME, NAME_PATTERN, "A name of its own."),
-            "on": {
-                "description": "Where the part is; ends of a selector inside an edge split the edge.",
-                "oneOf": [*choices, everything_else],
-            },
-            "condition": {
-                "type": "string",
-                "description": "dirichlet: functions vanish on the part; neumann: they are free there.",
-                "enum": list(CONDITIONS),
-            },
-        },
-        ("name", "on", "condition"),
-        "A named part of the boundary.",
+    on = {
+        "description": "Where the part is; ends of a selector inside an edge split the edge.",
+        "oneOf": [*choices, everything_else],
+    }
+
+    def part(conditions: list[str], description: str, more: JSON) -> JSON:
+        condition = {"type": "string", "description": description, "enum": conditions}
+        members = {"name": name("A name of its own."), "on": on, "condition": condition, **more}
+        return closed_object(members, ("name", "on", "condition", *more), "A named part of the boundary.")
+
+    plain = [condition for condition in CONDITIONS if condition != "robin"]
+    exchange = scalar_schema("alpha, in length unit per time unit: the flux per unit of the function.")
+    return {
+        "oneOf": [
+            part(plain, "dirichlet: functions vanish on the part; neumann: they are free there.", {}),
+            part(["robin"], "robin: the flux and exchange times the function balance.", {"exchange": exchange}),
+        ]
+    }
+
+
+def _region() -> JSON:
+    return closed_object(
+        {"name": name("A name of its own."), "shape": shape_schema()},
+        ("name", "shape"),
+        "A connected region; its shape may not fall into pieces.",
     )

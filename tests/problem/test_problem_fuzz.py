@@ -5,6 +5,7 @@ import time
 import warnings
 
 import pytest
+from operator_documents import by_region, rich, with_operator
 from problem_documents import KNOWN, SQUARE, full, inputs, multi, part, polygon
 
 from service.errors import ProblemError
@@ -47,6 +48,14 @@ POISON = [
     {"type": "Polygon"},
     {"segment": [[0, 0], [1, 0]]},
     [0, 0],
+    "x*y",
+    "1/x",
+    "x +",
+    "sqrt(x - y)",
+    [{"value": "-x"}],
+    [{"region": "left", "value": 1}, {"value": "2 - y"}],
+    {"stream_function": "tan(x)"},
+    "robin",
     [1e150, -1e150],
     [[0, 0], [1, 1]],
     SQUARE,
@@ -60,6 +69,13 @@ SEEDS = [
     ),
     inputs(polygon([[0, 0], [3, 1], [2, 2], [3, 3], [0, 4]], [[0.5, 1], [1, 1], [1, 2]])),
     inputs({"rectangle": {"corner": [0, 0], "size": [1, 1]}}, [part("a", {"box": [[0, 0], [1, 0]]})]),
+    rich(),
+    with_operator(
+        diffusion=by_region([["2 + sin(x)", "y"], ["-y", 1]], left="exp(-x*y)"),
+        velocity={"stream_function": by_region("sin(pi*x)*y", right="x^2/(1 + y)")},
+        reaction="max(x, y)",
+    ),
+    with_operator(velocity={"samples": {"points": [[0, 0], [1, 0], [0, 1]], "vectors": SQUARE[:3]}}),
 ]
 
 

@@ -99,6 +99,9 @@ BEYOND += (
 BEYOND += ("turns back", "encloses no area", "comes closer", "different vertices", "runs along", "run along")
 BEYOND += ("does not lie inside", "overlap", "must end with", "altitude", "asked for already")
 BEYOND += ("at most 33333 rings", "must extend", "opposite corner")
+BEYOND += ("At character", "with a space on both sides", "must lie between", "has this name", "never be used")
+BEYOND += ("must have no region", "no area in common", "falls into", "cannot be told apart", "could not be proved")
+BEYOND += ("does not exist", "must be positive", "must be 3 vectors", "on one line", "more than 1e+06 times")
 """Faults that a schema cannot express, by what their sentences say."""
 
 

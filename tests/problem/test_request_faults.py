@@ -71,9 +71,9 @@ FORM = [
     # the problem
     ("/problem/domain", GONE, "/problem"),
     ("/problem/domain", 3, "/problem/domain"),
-    ("/problem/operator", {}, "/problem/operator"),
+    ("/problem/operator", [], "/problem/operator"),
     ("/problem/load", {}, "/problem/load"),
-    ("/problem/norm", {}, "/problem/norm"),
+    ("/problem/norm", [], "/problem/norm"),
     ("/problem/title", 3, "/problem/title"),
     ("/problem/title", "x" * 201, "/problem/title"),
     ("/problem/title", "two\nlines", "/problem/title"),
@@ -83,7 +83,7 @@ FORM = [
     ("/problem/length_unit", "<b>", "/problem/length_unit"),
     ("/problem/length_unit", "m" * 21, "/problem/length_unit"),
     ("/problem/time_unit", None, "/problem/time_unit"),
-    ("/problem/domain/regions", [], "/problem/domain/regions"),
+    ("/problem/domain/regions", {}, "/problem/domain/regions"),
     ("/problem/domain/shape", GONE, "/problem/domain"),
     # shapes
     (SHAPE, [], SHAPE),
@@ -286,7 +286,7 @@ def test_many_places_of_one_kind_are_counted():
 
 
 def test_an_unknown_member_says_which_are_known():
-    ((_, detail),) = faults(changed("/problem/operator", {}))
+    ((_, detail),) = faults(changed("/problem/load", {}))
     assert "title, length_unit, time_unit, boundary" in detail
 
 

@@ -4,6 +4,7 @@ import json
 
 import numpy as np
 import pytest
+from operator_documents import rich
 from problem_documents import KNOWN, SQUARE, full, inputs, multi, part, polygon, read
 
 from service.problem.request import CAPS, Request, canonical, read_request
@@ -50,6 +51,7 @@ DOCUMENTS = {
     "two pieces": inputs(
         multi([SQUARE], [[[1, 0], [2, 0], [2, 1], [1, 1]]]), [part("low", {"segment": [[-1, 0], [9, 0]]})]
     ),
+    "rich": rich(),
     "apart": inputs(multi([SQUARE], [[[5, 0], [6, 0], [6, 1], [5, 1]]])),
 }
 
