@@ -11,7 +11,9 @@ import pytest
 from service.api.reader import DEPTH
 from service.demo import words
 from service.demo.examples import DEMO, examples
-from service.problem import boundary, positions, request
+from service.problem import boundary, names, positions, request
+from service.problem.expressions import parser
+from service.problem.regions import MOST_REGIONS
 from service.processes import constants
 from service.processes.schemas import CONSTANT, RESULT
 from service.settings import Settings
@@ -109,7 +111,9 @@ def test_the_limits_are_those_of_the_code() -> None:
     caps, defaults = request.CAPS, request.DEFAULT_LIMITS
     assert f"{DEPTH} levels" in stated["body"]
     assert f"{positions.MOST_POINTS:,} in a shape" in stated["points"]
-    assert f"{boundary.MOST_PARTS:,}, names up to {boundary.LONGEST_NAME}" in stated["boundary parts"]
+    assert f"{boundary.MOST_PARTS:,}, names up to {names.LONGEST_NAME}" in stated["boundary parts"]
+    assert stated["regions"] == f"{MOST_REGIONS:,}"
+    assert stated["expressions"] == f"{parser.DEFAULT_LIMITS.length:,} characters"
     assert f"up to {positions.LARGEST_COORDINATE:g}".replace("+", "") in stated["coordinates"]
     assert stated["tolerance"] == f"{request.SMALLEST_TOLERANCE:g} to {request.LARGEST_TOLERANCE:g}"
     assert stated["limits.seconds"] == f"{request.SHORTEST_SECONDS:g} to {caps.seconds:g}"
