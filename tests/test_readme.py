@@ -11,9 +11,6 @@ import pytest
 from service.api.reader import DEPTH
 from service.demo import words
 from service.demo.examples import DEMO, examples
-from service.problem import boundary, names, positions, request
-from service.problem.expressions import parser
-from service.problem.regions import MOST_REGIONS
 from service.processes import constants
 from service.processes.schemas import CONSTANT, RESULT
 from service.settings import Settings
@@ -106,19 +103,36 @@ def test_every_setting_has_its_row() -> None:
             )
 
 
-def test_the_limits_are_those_of_the_code() -> None:
+def test_the_limits_are_those_of_the_published_schema() -> None:
     stated = {row[0].strip("`"): row[1] for row in rows("Limits of a request")}
-    caps, defaults = request.CAPS, request.DEFAULT_LIMITS
+    inputs = {name: described["schema"] for name, described in constants.CONSTANTS_PROCESS.inputs.items()}
+    problem = inputs["problem"]["properties"]
+    polygon = next(shape for shape in choices(problem["domain"]["properties"]["shape"]) if "polygon" in shape)
+    points = polygon["polygon"]["properties"]["outer"]["maxItems"] - 1  # the first may be repeated at the end
+    coordinate = polygon["polygon"]["properties"]["outer"]["items"]["items"]["maximum"]
+    part = choices(problem["boundary"]["items"])[0]
+    expression = next(one for one in problem["operator"]["properties"]["reaction"]["oneOf"] if one["type"] == "string")
+    tolerance, limits = inputs["tolerance"], inputs["limits"]["properties"]
     assert f"{DEPTH} levels" in stated["body"]
-    assert f"{positions.MOST_POINTS:,} in a shape" in stated["points"]
-    assert f"{boundary.MOST_PARTS:,}, names up to {names.LONGEST_NAME}" in stated["boundary parts"]
-    assert stated["regions"] == f"{MOST_REGIONS:,}"
-    assert stated["expressions"] == f"{parser.DEFAULT_LIMITS.length:,} characters"
-    assert f"up to {positions.LARGEST_COORDINATE:g}".replace("+", "") in stated["coordinates"]
-    assert stated["tolerance"] == f"{request.SMALLEST_TOLERANCE:g} to {request.LARGEST_TOLERANCE:g}"
-    assert stated["limits.seconds"] == f"{request.SHORTEST_SECONDS:g} to {caps.seconds:g}"
-    assert stated["limits.unknowns"] == f"1 to {caps.unknowns:,}"
-    assert stated["title`, units"] == f"{request.LONGEST_TITLE} and {request.LONGEST_UNIT} characters"
+    assert f"{points:,} in a shape" in stated["points"]
+    assert stated["boundary parts"] == (
+        f"{problem['boundary']['maxItems']:,}, names up to {part['name']['maxLength']} characters"
+    )
+    assert stated["regions"] == f"{problem['domain']['properties']['regions']['maxItems']:,}"
+    assert stated["expressions"] == f"{expression['maxLength']:,} characters"
+    assert f"up to {coordinate:g}".replace("+", "") in stated["coordinates"]
+    assert stated["tolerance"] == f"{tolerance['minimum']:g} to {tolerance['maximum']:g}"
+    assert stated["limits.seconds"] == f"{limits['seconds']['minimum']:g} to {limits['seconds']['maximum']:g}"
+    assert stated["limits.unknowns"] == f"{limits['unknowns']['minimum']} to {limits['unknowns']['maximum']:,}"
+    assert stated["title`, units"] == (
+        f"{problem['title']['maxLength']} and {problem['length_unit']['maxLength']} characters"
+    )
     document = {row[0].strip("`"): row[1] for row in rows("The problem document")}
-    assert f"{request.DEFAULT_TOLERANCE:g} if left out" in document["tolerance"]
-    assert f"{defaults.seconds:g} and {defaults.unknowns:,} if left out" in document["limits"]
+    defaults = {name: limit["default"] for name, limit in limits.items()}
+    assert f"{tolerance['default']:g} if left out" in document["tolerance"]
+    assert f"{defaults['seconds']:g} and {defaults['unknowns']:,} if left out" in document["limits"]
+
+
+def choices(schema: dict[str, Any]) -> list[dict[str, Any]]:
+    """The members of each of the objects that a schema offers."""
+    return [one["properties"] for one in schema.get("oneOf", [schema])]
