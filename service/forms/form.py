@@ -93,27 +93,36 @@ class Form:
         return np.abs(self.facet[:, 1:]) @ suprema(self.mesh.dimension - 1, self.facet.shape[1])[1:]
 
     @cached_property
+    def anisotropy(self) -> float:
+        """Largest ratio of the eigenvalues of G on a cell; infinite where G is not positive definite."""
+        if not np.any(self.diffusion):
+            return 1.0
+        least = np.linalg.eigvalsh(self.diffusion_floor)[:, 0]
+        mean = np.linalg.eigvalsh(self.diffusion[:, 0])
+        most = mean[:, -1] + np.maximum(mean[:, 0] - least, 0.0)
+        return float(np.max(most / least)) if np.all(least > 0) else np.inf
+
+    @cached_property
     def metric_error(self) -> float:
         """Bound e with (1-e) M <= M' <= (1+e) M for the metrics: M' exact for ``spans`` as given, M as computed.
 
         Entries of the d x d products and inverses have errors of at most c d u times the products of norms,
-        against smallest eigenvalues that are cond(J)^2 below the largest.
+        against smallest eigenvalues that are cond(J)^2 cond(G) below the largest.
         """
         spans = self.mesh.spans
         condition = np.linalg.norm(spans, axis=(1, 2)) * np.linalg.norm(np.linalg.inv(spans), axis=(1, 2))
-        return float(32 * self.mesh.dimension**2 * UNIT * np.max(condition) ** 2)
+        return float(32 * self.mesh.dimension**2 * UNIT * np.max(condition) ** 2 * self.anisotropy)
 
     @cached_property
     def uncertainty(self) -> float:
-        """Bound e: each part of the true form (gradients, potential on a cell, a facet) is that of these arrays
-        times a
+        """Bound e: each part of the true form (gradients, potential on a cell, a facet) is that of these arrays times a
         factor within 1 - e and 1 + e.
 
-        If the true Jacobian is (I + F) J, gradients change by (I + F)^-T, volumes by det(I + F) and facets in
-        between:
-        factors within (1 +- |F|)^d / (1 -+ |F|)^2; then the rounding of the metrics and of sums of forms.
+        If the true Jacobian is (I + F) J, gradients change by (I + F)^-T, in the metric of G by at most
+        cond(G)^(1/2) |F|; volumes by det(I + F), facets in between. Then the rounding of metrics and sums of forms.
         """
-        return 1.1 * (self.mesh.dimension + 2) * self.mesh.shape_error + self.metric_error
+        stretched = self.mesh.dimension + 2 * np.sqrt(self.anisotropy)
+        return float(1.1 * stretched * self.mesh.shape_error + self.metric_error)
 
     def moved(self, sign: float) -> "Form":
         """A form below (sign -1) or above (sign +1) every true form that these arrays may stand for."""
