@@ -153,6 +153,12 @@ def look(
     fine = reachable(pencil, pencil_on, refined, goal, cells)
     if fine is None:
         return Prospect(ratios, functions, Separation(0, 0.0, 0.0, pencil), shrink_to(pencil, goal))
+    if useful and fine is not pencil:
+        # The coarse values may be far too high to say where the gap is.
+        better, _ = first_pairs(TrialSpace(fine, 2), wanted)
+        ritz = np.minimum(ritz, better[: len(ritz)])
+        size, gap = gap_above(ritz, index)
+        useful = gap >= LEAST_GAP
     cut = separate(fine, ritz, size) if useful else Separation(0, 0.0, 0.0, fine)
     return Prospect(ratios, functions, cut)
 
@@ -224,7 +230,9 @@ def enclose(
         widths: list[float] = []
         while True:
             found = sharpen(pencil, index, cut, order, functions, ratios)
-            if prospect.shrink is None and not math.isfinite(found.lower):
+            # Trial functions of low order may be too poor for a cut that is proved: count only to have something.
+            counting = not cut.count or not math.isfinite(known.lower)
+            if prospect.shrink is None and counting and not math.isfinite(found.lower):
                 found = found.intersect(count_below(cut.pencil, found.upper, index, order, budget.width))
             known = known.intersect(found)
             widths.append(found.width)

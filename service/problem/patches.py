@@ -27,8 +27,9 @@ class Patches:
 
     @cached_property
     def whole(self) -> shapely.Geometry:
-        """The domain."""
-        return shapely.union_all(domain_polygons(self.domain, self.exponent))
+        """The domain; made valid where rounded points on its edges have crossed other edges in the last bits."""
+        pieces = domain_polygons(self.domain, self.exponent)
+        return shapely.union_all(np.where(shapely.is_valid(pieces), pieces, shapely.make_valid(pieces)))
 
     @cached_property
     def regions(self) -> dict[str, shapely.Polygon]:
