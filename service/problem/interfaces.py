@@ -7,11 +7,15 @@ from numpy.typing import NDArray
 from service.problem.border import Border, border_of, domain_polygons
 from service.problem.domain import PlaneDomain, Region
 from service.problem.drawing import Drawing, RegionError, strokes_of
-from service.problem.noding import NARROW, UNSTABLE, noded
+from service.problem.noding import UNSTABLE, noded
 from service.problem.placing import drawing_of
 from service.problem.positions import Points, say
 from service.problem.regions import RegionOutline
 from service.problem.segments import Indices, Subdivision, inner, renumber, subdivide
+
+NARROW = (
+    "Near {point} the region comes within {tolerance} of itself, where its sides cannot be told apart in this domain."
+)
 
 FARTHEST = 1e6
 """How far a region may reach beyond the domain, in diameters; farther, its sides are not exact enough."""
@@ -80,8 +84,8 @@ def _inner_strokes(drawing: Drawing, border: Border, pieces: NDArray[np.object_]
     polygons = _polygons(drawing)
     torn = np.flatnonzero(~shapely.is_valid(polygons))
     if len(torn):
-        first = np.argmax(drawing.region[drawing.ring] == torn[0])
-        raise RegionError(int(torn[0]), drawing.points[drawing.start[first]], NARROW)
+        vertex, count = np.unique(drawing.start[drawing.region[drawing.ring] == torn[0]], return_counts=True)
+        raise RegionError(int(torn[0]), drawing.points[vertex[np.argmax(count)]], NARROW)
     _, sides = strokes.sides(np.flatnonzero(inside))
     crossed = np.unique(drawing.region[drawing.ring[sides]])
     others = np.setdiff1d(np.arange(len(polygons)), crossed)

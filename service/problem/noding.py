@@ -37,9 +37,6 @@ UNSTABLE = (
     "Near {point} too many sides of regions pass within {tolerance} of each other to be told apart. Let them meet "
     "in equal vertices, or move them apart."
 )
-NARROW = (
-    "Near {point} the region comes within {tolerance} of itself, where its sides cannot be told apart in this domain."
-)
 
 
 @dataclass(frozen=True)
@@ -61,7 +58,7 @@ def noded(drawing: Drawing, border: Border) -> Drawing:
 
     Raises
     ------
-    RegionError : a region comes too close to itself; or there is too much to look at.
+    RegionError : there is too much to look at, or no end to it.
     """
     if not drawing.active.any():
         return drawing
@@ -69,7 +66,8 @@ def noded(drawing: Drawing, border: Border) -> Drawing:
         strokes = strokes_of(drawing)
         contacts = _contacts(drawing, border, strokes)
         if len(contacts.stroke):
-            drawing = _through_vertices(drawing, strokes, contacts)
+            row, side = strokes.sides(contacts.stroke)
+            drawing = drawing.cut(side, contacts.vertex[row])
         elif len(contacts.first):
             drawing = _through_crossings(drawing, border, strokes, contacts)
         else:
@@ -104,19 +102,6 @@ def _contacts(drawing: Drawing, border: Border, strokes: Strokes) -> _Contacts:
     return _Contacts(stroke, vertex, first[order], second[order])
 
 
-def _through_vertices(drawing: Drawing, strokes: Strokes, contacts: _Contacts) -> Drawing:
-    """Lead sides through the vertices they pass."""
-    row, side = strokes.sides(contacts.stroke)
-    vertex = contacts.vertex[row]
-    size = len(drawing.points)
-    corners = drawing.region[drawing.ring] * size + drawing.start
-    own = np.isin(drawing.region[drawing.ring[side]] * size + vertex, corners)
-    if own.any():
-        where = int(np.argmax(own))
-        raise RegionError(drawing.owner(int(side[where])), drawing.points[vertex[where]], NARROW)
-    return drawing.cut(side, vertex)
-
-
 def _through_crossings(drawing: Drawing, border: Border, strokes: Strokes, contacts: _Contacts) -> Drawing:
     """Give sides that cross the boundary a vertex there; when there are none left, those that cross each other.
 
@@ -124,7 +109,7 @@ def _through_crossings(drawing: Drawing, border: Border, strokes: Strokes, conta
     """
     count = len(strokes.start)
     at_border = contacts.second >= count
-    now = at_border if at_border.any() else ~at_border
+    now = at_border == at_border.any()
     first, second, at_border = contacts.first[now], contacts.second[now], at_border[now]
     ends = np.stack([np.append(strokes.start, border.start), np.append(strokes.end, border.end)], axis=1)
     a, b = drawing.points[ends[second, 0]], drawing.points[ends[second, 1]]
@@ -143,9 +128,7 @@ def _through_crossings(drawing: Drawing, border: Border, strokes: Strokes, conta
     between = np.where(own < 0, other, own)
     between[on_line[chosen]] = -1
     row, side = strokes.sides(first if at_border.any() else np.append(first, second))
-    through = np.append(vertex, vertex)[row]
-    _refuse_pinched(drawing, side, through, points, vertex)
-    return drawing.with_vertices(points[chosen], line[chosen], between).cut(side, through)
+    return drawing.with_vertices(points[chosen], line[chosen], between).cut(side, np.append(vertex, vertex)[row])
 
 
 def _crossing_points(a: Points, b: Points, c: Points, d: Points) -> Points:
@@ -161,14 +144,3 @@ def _straight(drawing: Drawing, ends: Indices) -> Indices:
     vertex = np.arange(len(drawing.points))
     divides = (drawing.between[:, 0] != vertex) | (drawing.line >= 0)
     return np.where(divides[ends].any(axis=1)[:, None], -1, ends)
-
-
-def _refuse_pinched(drawing: Drawing, side: Indices, vertex: Indices, points: Points, of: Indices) -> None:
-    """Find a region two sides of which would get the same vertex."""
-    inner = (vertex != drawing.start[side]) & (vertex != drawing.end[side])
-    side, vertex = np.unique(np.stack([side[inner], vertex[inner]]), axis=1)
-    pairs = np.stack([drawing.region[drawing.ring[side]], vertex])
-    pairs, counts = np.unique(pairs, axis=1, return_counts=True)
-    if (counts > 1).any():
-        region, where = pairs[:, np.argmax(counts > 1)]
-        raise RegionError(int(region), points[np.argmax(of == where)], NARROW)

@@ -72,8 +72,6 @@ def _placed(border: Border, corners: Points, near: Mask) -> tuple[Indices, Point
     places[moved] = border.on_lines(corners[moved], line[moved])
     known[moved] = nearest(border.points, places[moved], border.tolerance)
     close = close[known[close] < 0]
-    # Those on the boundary come first, so that others join them and not the other way round.
-    close = close[np.argsort(line[close] < 0, kind="stable")]
     leader = np.arange(len(corners))
     leader[close] = close[leaders(places[close], border.tolerance)]
     kept = (leader == np.arange(len(corners))) & (known < 0)
