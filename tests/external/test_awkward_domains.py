@@ -68,7 +68,7 @@ def test_dumbbell_held_all_round(channel: float) -> None:
 
 
 @pytest.mark.parametrize("name", BOTH)
-@pytest.mark.parametrize("count", [2, 4])
+@pytest.mark.parametrize("count", [2, pytest.param(4, marks=pytest.mark.slow)])
 def test_plan_of_many_rooms(count: int, name: str) -> None:
     """Held all round, count^2 eigenvalues lie within a hair of one another."""
     outer, *holes = rooms(count)

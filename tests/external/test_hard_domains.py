@@ -22,6 +22,7 @@ def around_the_hole(factor: float = 1.0) -> list[JSON]:
     return held({"box": [[factor * x for x in low], [factor * x for x in high]]})
 
 
+@pytest.mark.slow
 def test_thin_strip_held_all_round() -> None:
     answer = ask(polygon(strip(0.001)), ALL_ROUND, TOLERANCE)
     with mpmath.workdps(40):
@@ -154,7 +155,13 @@ def ask_scaled(name: str, factor: float) -> Answer:
     return ask(polygon(scaled(ring, factor), *holes), boundary, TOLERANCE)
 
 
-@pytest.mark.parametrize("name", SCALED)
+COSTLY = "strip, all round"
+"""Takes most of a minute on a quiet machine, and is limited to one: run with -m slow."""
+
+
+@pytest.mark.parametrize(
+    "name", [pytest.param(name, marks=pytest.mark.slow) if name == COSTLY else name for name in SCALED]
+)
 def test_millimetres_and_kilometres(name: str) -> None:
     """Enclosures of the same shape, given in three units, intersect once scaled back; each has the width asked for."""
     constant = SCALED[name][3]
