@@ -1,12 +1,15 @@
 """Inertia counts: the residual is a bound in multiple precision, and counts are those of dense eigenvalues."""
 
 from fractions import Fraction
+from types import SimpleNamespace
 
 import numpy as np
 import pytest
+import qdldl
 from numpy.typing import NDArray
 from scipy.sparse import csc_matrix, diags_array, random_array
 
+from service.bounds import inertia
 from service.bounds.inertia import SingularPivotError, factorise, smallest_eigenvalue_bound
 
 Array = NDArray[np.float64]
@@ -43,6 +46,27 @@ def test_residual_bounds_the_error_of_the_factors(seed: int, spread: float) -> N
     assert 0 < error <= found.residual
     # A bound by row sums and a-priori roundings, not a wild guess: within a few thousand times the truth.
     assert found.residual <= 1e4 * error
+
+
+class Careless:
+    """A solver whose pivots are off by a millionth."""
+
+    def __init__(self, matrix: csc_matrix, upper: bool) -> None:
+        self.honest = qdldl.Solver(matrix, upper=upper)
+
+    def factors(self) -> tuple[csc_matrix, Array, NDArray[np.int64]]:
+        lower, pivots, order = self.honest.factors()
+        return lower, pivots * (1 + 1e-6), order
+
+
+def test_a_careless_factorisation_is_found_out(monkeypatch: pytest.MonkeyPatch) -> None:
+    """The residual is formed from the factors, not believed."""
+    matrix = indefinite(30, 3)
+    honest = factorise(matrix).residual
+    monkeypatch.setattr(inertia, "qdldl", SimpleNamespace(Solver=Careless))
+    error = float(np.linalg.norm(exact_residual(matrix), 2))
+    assert error > 1e-7 > honest
+    assert error <= factorise(matrix).residual
 
 
 @pytest.mark.parametrize("size", [1, 2, 40, 300])

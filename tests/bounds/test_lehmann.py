@@ -105,6 +105,21 @@ def test_bounds_enclose_though_the_matrices_are_wrong(
     assert np.all(values[:count] <= upper)
 
 
+@pytest.mark.parametrize("which", ["energy", "mass", "dual"])
+@pytest.mark.parametrize("by", [1e-8, 1e-4, 1e-2])
+def test_each_matrix_may_be_wrong_in_the_worst_direction(by: float, which: str) -> None:
+    """Exact eigenvectors leave no room: what a smaller dual, or energy, or a larger mass, would gain is taken back."""
+    pencil = known(VALUES, 1, 0.0, 0.0, 8)
+    matrices = {"energy": pencil.energy, "mass": pencil.mass, "dual": pencil.dual}
+    for sign in (-1.0, 1.0):
+        grams = {name: exactly(matrix) for name, matrix in matrices.items()}
+        bound = by * matrices[which]
+        grams[which] = Gram(matrices[which] + sign * bound, 1.000001 * bound + 1e-10 * matrices[which])
+        lower = lower_bounds(grams["energy"], grams["mass"], grams["dual"], 1.5)
+        upper = upper_bounds(grams["energy"], grams["mass"])
+        assert lower[0] <= VALUES[0] <= upper[0]
+
+
 def test_small_errors_cost_little() -> None:
     """Eigenvectors, matrices off by 1e-9: the bounds are off by not much more."""
     pencil = known(VALUES, 3, 0.0, 0.0, 2)
