@@ -41,7 +41,7 @@ def with_regions(
         return None
     try:
         drawing = noded(drawing_of(border, rings, owner), border)
-        interfaces, missing = _inner_strokes(drawing, border, domain_polygons(domain, exponent))
+        interfaces, missing = inner_strokes(drawing, border, domain_polygons(domain, exponent))
     except RegionError as clash:
         point, length = say(np.ldexp(clash.point, exponent)), f"{np.ldexp(tolerance, exponent):.3g}"
         regions[clash.region].place.refuse(clash.sentence.format(point=point, tolerance=length))
@@ -63,7 +63,7 @@ def _far_away(border: Border, rings: list[Points], owner: Indices, regions: tupl
     return any(far)
 
 
-def _inner_strokes(drawing: Drawing, border: Border, pieces: NDArray[np.object_]) -> tuple[Indices, list[int]]:
+def inner_strokes(drawing: Drawing, border: Border, pieces: NDArray[np.object_]) -> tuple[Indices, list[int]]:
     """The segments of sides inside the domain, (k, 2) vertex numbers, and the regions that do not meet it."""
     strokes = strokes_of(drawing)
     ends = np.stack([strokes.start, strokes.end], axis=1)

@@ -157,6 +157,15 @@ def test_the_scale_of_the_domain_is_respected():
     assert Prover(2).failure(claim, cover).point[0] == 2
 
 
+@pytest.mark.parametrize("text", ["x*(1 - x)", "-x*(1 - x)"])
+def test_values_have_a_bound_on_both_sides(text):
+    """The largest size, 1/4, is far from the corners."""
+    cover = area_cover(shapely.box(0, 0, 1, 1))
+    assert Prover(0).failure(Claim(parse(text), largest=0.2501), cover) is None
+    found = Prover(0).failure(Claim(parse(text), largest=0.2499), cover)
+    assert abs(found.point[0] - 0.5) < 0.02
+
+
 def test_effort_is_limited():
     effort = Effort(1000)
     claim = Claim(parse("1/(x - y)"))
