@@ -99,11 +99,11 @@ def describe(request: Request, question: Question, value: Enclosure) -> JSON:
     """One constant as the result shows it."""
     known = math.isfinite(value.width)
     return {
-        "lower": value.lower if math.isfinite(value.lower) else None,
-        "upper": value.upper if math.isfinite(value.upper) else None,
-        "best": value.lower if value.lower_by.startswith("Ritz") else value.upper,
-        "relative_width": value.width if known else None,
-        "target_met": value.width <= request.tolerance,
+        "lower": float(value.lower) if math.isfinite(value.lower) else None,
+        "upper": float(value.upper) if math.isfinite(value.upper) else None,
+        "best": float(value.lower if value.lower_by.startswith("Ritz") else value.upper),
+        "relative_width": float(value.width) if known else None,
+        "target_met": bool(value.width <= request.tolerance),
         "rigour": "guaranteed",
         "rounding": "included",
         "unit": question.unit,
@@ -175,7 +175,7 @@ def run(inputs: JSON, report: Report) -> JSON:
                     "seconds": round(time.monotonic() - begun, 4),
                     "level": step.level,
                     "order": step.order,
-                    "widths": {name: value.width if math.isfinite(value.width) else None},
+                    "widths": {name: float(value.width) if math.isfinite(value.width) else None},
                 }
             )
             percent = 100 * (done + progress(value.width, request.tolerance)) / len(questions)
