@@ -49,11 +49,6 @@ class Claim:
         result: Mask = fine & (found.lower > 0) if self.positive else fine
         return result
 
-    def refuted(self, found: Interval) -> Mask:
-        """On which boxes the claim holds at no point."""
-        result: Mask = found.undefined | (found.lower > self.largest) | (found.upper < -self.largest)
-        return result | (found.defined & (found.upper <= 0)) if self.positive else result
-
     def violated(self, found: Floats) -> Mask:
         """Which values at points, in floating-point arithmetic, are not in the range."""
         outside = ~(np.abs(found) <= self.largest)
@@ -115,12 +110,6 @@ class Prover:
         found = enclosures(claim.expression, low, high)
         open_ones = np.flatnonzero(~claim.proved(found))
         open_ones = open_ones[cover.near(boxes.chosen(open_ones))]
-        refuted = claim.refuted(found)[open_ones]
-        if refuted.any():
-            _, points = cover.witnesses(boxes.chosen(open_ones[refuted]))
-            if len(points):
-                return boxes, Failure(self._unscaled(points[0]), True)
-            open_ones = open_ones[~refuted]
         if len(open_ones) == 0:
             return boxes.chosen(open_ones), None
         sharper = range_bounds(_models(claim.expression, low[:, open_ones], high[:, open_ones]))

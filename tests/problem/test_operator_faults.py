@@ -184,6 +184,7 @@ VALUES = [
     ({"diffusion": [[1, 3], [-1, 1]]}, DIFFUSION, "smallest eigenvalue of its symmetric part is 0 at"),
     ({"diffusion": [[1, 0], [0, -1]]}, DIFFUSION, "smallest eigenvalue of its symmetric part is -1 at"),
     ({"diffusion": [[-1, 0], [0, -1]]}, DIFFUSION, "it is -1 at"),
+    ({"diffusion": [[-1, 0], [0, -2]]}, DIFFUSION, "smallest eigenvalue of its symmetric part is -2 at"),
     ({"diffusion": [[1, "2*x"], ["2*x", 1]]}, DIFFUSION, "smallest eigenvalue of its symmetric part is 0 at (0.5, 0)"),
     ({"diffusion": by_region(1, right="0.75 - x")}, f"{DIFFUSION}/0/value", "it is -0.25 at (1, 0)"),
     ({"diffusion": by_region("x - 0.25", right=1)}, f"{DIFFUSION}/1/value", "it is -0.25 at (0, 0)"),
