@@ -9,6 +9,7 @@ import time
 import mpmath
 import pytest
 from asking import ALL_ROUND, along, ask, enclosure, held, polygon
+from plane_shapes import notched
 
 from service.bounds.refine import Budget, enclose
 from service.constants.registry import CONSTANTS
@@ -79,3 +80,21 @@ def test_l_shape_held_on_some_sides_to_a_millionth(name: str) -> None:
     lower, _ = enclosure(answer, "friedrichs", 1e-6)
     every = enclosure(ask(polygon(L_SHAPE), ALL_ROUND, 1e-3), "friedrichs", 1e-3)
     assert every[1] < lower
+
+
+WEAK = {
+    "exponent 1/3": (L_SHAPE, held(along((0, 0), (0, -1)))),
+    "exponent 1/4": (notched(359), held(along(*notched(359)[2:4]))),
+    "exponent 1/2": ([(0, 0), (1, 0), (1, 1), (0, 1)], held(along((0.25, 0), (0.75, 0)))),
+}
+
+
+@pytest.mark.parametrize("name", WEAK)
+def test_asking_for_more_never_gives_less(name: str) -> None:
+    """Where layers must go deep: a run for 1e-8 may end early, but not short of the 1e-5 that a run for 1e-5 proves."""
+    ring, boundary = WEAK[name]
+    plain = enclosure(ask(polygon(ring), boundary, 1e-5, seconds=10), "friedrichs", 1e-5)
+    value = ask(polygon(ring), boundary, 1e-8, seconds=10).constant("friedrichs")
+    assert value["relative_width"] <= 1e-5
+    assert value["lower"] <= plain[1]
+    assert plain[0] <= value["upper"]
