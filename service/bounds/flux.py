@@ -18,6 +18,7 @@ from numpy.typing import NDArray
 
 from service.bounds.condensed import Numbering, assemble, positive_solver
 from service.bounds.gram import Gram, gram
+from service.bounds.outflow import balance, exact_total
 from service.bounds.rounding import gamma
 from service.elements.reference import REFERENCE_ERROR, FluxReference, flux_reference, magnitude
 from service.forms.form import Form
@@ -45,11 +46,24 @@ class FluxSpace:
 
     @cached_property
     def metric(self) -> Array:
-        """(nc, d, d) M with int_T G^-1 s . t = sum_ab M_ab int s^a t^b for Piola-mapped fields."""
-        spans = self.form.mesh.spans
-        metric = spans.swapaxes(1, 2) @ np.linalg.solve(self.form.diffusion[:, 0], spans)
-        metric /= self.form.jacobian[:, None, None]
-        return np.asarray((metric + metric.swapaxes(1, 2)) / 2)
+        """(nc, d, d) M^-1 with int_T G^-1 s . t = sum_ab (M^-1)_ab int s^a t^b for Piola-mapped fields, M the metric of
+        gradients."""
+        inverse = np.linalg.inv(self.form.gradient_metric[:, 0])
+        return np.asarray((inverse + inverse.swapaxes(1, 2)) / 2)
+
+    @cached_property
+    def metric_error(self) -> float:
+        """Bound e: the inverse of M as computed is at most (1 + e) times this ``metric`` N.
+
+        L^T N L = I + F for M + E = L L^T: F is evaluated, E bounded by the a priori bound of Cholesky's method.
+        """
+        factor = np.linalg.cholesky(self.form.gradient_metric[:, 0])
+        right, size = factor.swapaxes(1, 2), np.abs(factor)
+        d = self.form.mesh.dimension
+        defect = np.abs(right @ self.metric @ factor - np.eye(d))
+        defect += gamma(4 * d) * (size.swapaxes(1, 2) @ np.abs(self.metric) @ size)
+        backward = gamma(2 * d) * np.sum((np.abs(np.linalg.inv(factor)) @ size) ** 2, axis=(1, 2))
+        return float(1.2 * np.max(np.linalg.norm(defect, axis=(1, 2)) + 1.1 * backward))
 
     def local(self, absolute: bool = False) -> Array:
         """Local energies (nc, n, n); with ``absolute`` the sum of absolute values of all that enters them."""
@@ -106,15 +120,15 @@ class FluxSpace:
         factor = positive_solver(assemble(mobility, numbering.skeleton, numbering.shared))
         outflows = particular
         # The second pass refines the first: in the smallest cells the last digits of the outflow count.
-        for _ in range(2):
+        for _ in range(3):
             multiplier = factor.solve(numbering.gather.T @ outflows.reshape(-1, columns))
             outflows = outflows - mobility @ (numbering.gather @ multiplier).reshape(cells, facet, columns)
-        outflows = self._conforming(outflows)
+        outflows = self._conforming(outflows, sources[:, 0] / self.reference.divergence[0, 0])
         remainder = inner @ load[:, facet:] - coupling @ outflows
         return np.concatenate([outflows, remainder, sources[:, 1:]], axis=1)
 
-    def _conforming(self, outflows: Array) -> Array:
-        """Facet coefficients made opposite on both sides and zero on the Neumann part."""
+    def _conforming(self, outflows: Array, totals: Array) -> Array:
+        """Facet coefficients opposite on both sides, zero on the Neumann part, with ``totals`` (nc, m)."""
         mesh = self.form.mesh
         cells, _, columns = outflows.shape
         faces = mesh.dimension + 1
@@ -126,10 +140,19 @@ class FluxSpace:
         boundary = mesh.facet_cells[:, 1] < 0
         factor = np.where(boundary, np.where(self.form.dirichlet, 1.0, 0.0), 0.5)
         mean = total * factor[:, None, None]
+        mean[:, 0] = balance(mesh, self.form.dirichlet, mean[:, 0], totals)
         return np.asarray((sign * mean[mesh.cell_facets]).reshape(outflows.shape))
 
     def divergence_moments(self, fields: Array) -> tuple[Array, Array]:
-        """Moments (nc, q, m) of the divergence times the Jacobian, and a bound of the error of each."""
-        divergence = self.reference.divergence
+        """Moments (nc, q, m) of the divergence times the Jacobian, and a bound of the error of each.
+
+        Row 0 is the flow out of a cell, whose sum is formed without loss.
+        """
+        divergence, facet = self.reference.divergence, self.reference.facet
         relative = 2 * REFERENCE_ERROR + gamma(2 * divergence.shape[1])
-        return divergence @ fields, relative * (magnitude(divergence) @ np.abs(fields))
+        error = relative * (magnitude(divergence) @ np.abs(fields))
+        moments = divergence @ fields
+        flow, lost = exact_total(fields[:, : facet : facet // (self.form.mesh.dimension + 1)])
+        moments[:, 0] = divergence[0, 0] * flow
+        error[:, 0] = 1.01 * divergence[0, 0] * lost + gamma(2) * np.abs(moments[:, 0])
+        return moments, error

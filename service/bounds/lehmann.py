@@ -9,6 +9,7 @@ from numpy.typing import NDArray
 
 from service.bounds.flux import FluxSpace
 from service.bounds.gram import Gram
+from service.bounds.minorant import poincare_constants
 from service.bounds.ritz import TrialSpace
 from service.bounds.rounding import UNIT, down, exact_sum, gamma, up
 from service.elements.reference import REFERENCE_ERROR, magnitude
@@ -102,6 +103,10 @@ def goerisch_gram(trial: TrialSpace, flux: FluxSpace, functions: Array, ratios: 
     p, b = energy.potential[:, :, None], weight.potential[:, :, None]
     fields = flux.equilibrate(jacobian * (p / ratios - b) * moments)
     spread, doubt = flux.divergence_moments(fields)
+    # Beyond the mean, what the divergence may be off by is that of a small field without flow out of the cell.
+    lost = np.sqrt(np.sum(doubt[:, 1:] ** 2, axis=1) / energy.jacobian[:, None])
+    strayed = 1.01 * np.linalg.norm(poincare_constants(energy)[:, None] * lost, axis=0)
+    doubt[:, 1:] = 0.0
     residual = b * jacobian * moments + spread
     relative = 2 * REFERENCE_ERROR + gamma(2 * functions.shape[1] + 8)
     doubt = doubt + relative * b * jacobian * (magnitude(trial.reference.moments) @ np.abs(functions))
@@ -113,5 +118,8 @@ def goerisch_gram(trial: TrialSpace, flux: FluxSpace, functions: Array, ratios: 
     error = blur.swapaxes(1, 2) @ (np.abs(residual) + doubt)
     error = error + error.swapaxes(1, 2) + gamma(residual.shape[1] + 8) * (size.swapaxes(1, 2) @ np.abs(residual))
     error = exact_sum(error)
-    # The forms are those of the computed gradient metric; the flux metric is its inverse up to metric_error.
-    return flux.energy_gram(fields).scaled(1 + 4 * energy.metric_error) + Gram((matrix + matrix.T) / 2, 1.01 * error)
+    steep = flux.energy_gram(fields)
+    length = np.sqrt(np.diag(steep.matrix) + np.diag(steep.error)) + strayed
+    error = error + np.outer(length, strayed) + np.outer(strayed, length)
+    # The energy is that of the computed metric of gradients, whose inverse the metric of fluxes is but for an error.
+    return steep.scaled(1 + flux.metric_error) + Gram((matrix + matrix.T) / 2, 1.01 * error)

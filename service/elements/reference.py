@@ -61,7 +61,8 @@ class FluxReference:
     divergences are psi_1, psi_2, ... of the orthonormal polynomial basis (psi_0 is constant).
 
     mass : (d, d, n, n) integrals of the components s_i^a s_j^b.
-    divergence : (q, n) integrals of psi_l div s_j.
+    divergence : (q, n) integrals of psi_l div s_j. Row 0 is psi_0 times the flow out of the cell: psi_0
+        itself, correctly rounded, for the constant on each facet, and zero for all other functions.
     facet, free : numbers of facet functions and of divergence-free bubbles.
     """
 
@@ -194,4 +195,6 @@ def flux_reference(dimension: int, order: int) -> FluxReference:
     facet = (dimension + 1) * simplex_dimension(dimension - 1, order)
     change, free = flux_transform(mass.astype(float), divergence.astype(float), facet)
     divergences = np.asarray(divergence @ change, dtype=float)
+    divergences[0] = 0.0
+    divergences[0, : facet : facet // (dimension + 1)] = math.sqrt(math.factorial(dimension))
     return FluxReference(order, change_basis(mass, change), divergences, facet, free)

@@ -20,6 +20,9 @@ ORDER = 5
 
 _SHARE = 0.1
 
+_SMALLEST = 1e-14
+"""Size of elements, relative to that of the domain, below which rounding of fluxes costs more than layers gain."""
+
 
 def interior_angles(points: NDArray[np.float64], edges: NDArray[np.int64]) -> NDArray[np.float64]:
     """Angle ω in (0, 2π] between the two edges at every vertex, measured inside the domain, (n,).
@@ -66,7 +69,7 @@ def layer_counts(exponents: NDArray[np.float64], sizes: NDArray[np.float64], tar
     The smallest n ≥ 0 with w² (hσⁿ)^{2α} p^{-4α} ≤ 0.1 · target: the relative eigenvalue error of the
     p-version on elements of size hσⁿ at r^α. The weight w = min(1, 2|α − m|), m the nearest positive
     integer, is 1 for exponents ≤ 1/2 and vanishes where r^α is smooth: there the singular term is
-    w times what remains between r^α and r^m.
+    w times what remains between r^α and r^m. Elements never get smaller than 1e-14 of the domain.
 
     Parameters
     ----------
@@ -81,7 +84,8 @@ def layer_counts(exponents: NDArray[np.float64], sizes: NDArray[np.float64], tar
     # Size below which the corner element may be left alone: w² x^{2α} p^{-4α} = 0.1 target.
     allowed = ORDER**2 * (_SHARE * target / safe**2) ** (0.5 / exponents)
     layers = np.ceil(np.log(sizes / allowed) / -np.log(LAYER_RATIO))
-    return np.where(smooth, 0, np.maximum(layers, 0)).astype(np.int64)
+    most = np.floor(np.log(sizes / _SMALLEST) / -np.log(LAYER_RATIO))
+    return np.where(smooth, 0, np.clip(layers, 0, np.maximum(most, 0))).astype(np.int64)
 
 
 def _neighbours(edges: NDArray[np.int64], count: int) -> tuple[NDArray[np.int64], NDArray[np.int64]]:

@@ -20,8 +20,8 @@ from service.problem.domain import PlaneDomain, Region
 Diffusion = Callable[[NDArray[np.bool_]], NDArray[np.float64]]
 """Scalar diffusion, (n,), in any unit, of places with the given memberships in regions, (n, R)."""
 
-MOST_LAYERS = 40
-"""Layers at a vertex of interfaces: 4⁻⁴⁰ of an element, below which r^α does not fall if α < 0.02."""
+MOST_LAYERS = 24
+"""Layers at a vertex of interfaces: they end at 4⁻²⁴ of an element, below what rounding lets any corner go to."""
 
 _SMALLEST_EXPONENT = 0.05
 """Exponents below this ask for more layers than there may be in any case, and for numbers out of range."""

