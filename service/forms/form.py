@@ -9,7 +9,7 @@ from functools import cached_property, lru_cache
 import numpy as np
 from numpy.typing import NDArray
 
-from service.bounds.rounding import UNIT
+from service.bounds.rounding import UNIT, gamma
 from service.elements.jet import simplex_dimension
 from service.elements.reference import raw_orthonormal, scalar_norms
 from service.elements.scalar import barycentric, subsimplices
@@ -104,14 +104,32 @@ class Form:
 
     @cached_property
     def metric_error(self) -> float:
-        """Bound e with (1-e) M <= M' <= (1+e) M for the metrics: M' exact for ``spans`` as given, M as computed.
+        """Bound e with (1-e) M <= M' <= (1+e) M for the metrics: M' exact for ``spans`` as given, M as computed;
+        also for volumes and facets. Infinite where G is not safely positive definite.
 
-        Entries of the d x d products and inverses have errors of at most c d u times the products of norms,
-        against smallest eigenvalues that are cond(J)^2 cond(G) below the largest.
+        With X the computed inverse of J and R = J X - I, X G X^T = J^-1 (I + R) G (I + R)^T J^-T: what R changes is
+        measured in the metric of G, the rounding of the products in that of M, all with absolute values entry by entry.
         """
-        spans = self.mesh.spans
-        condition = np.linalg.norm(spans, axis=(1, 2)) * np.linalg.norm(np.linalg.inv(spans), axis=(1, 2))
-        return float(32 * self.mesh.dimension**2 * UNIT * np.max(condition) ** 2 * self.anisotropy)
+        d, spans = self.mesh.dimension, self.mesh.spans
+        inverse = np.linalg.inv(spans)
+        reach = np.abs(inverse) @ np.abs(spans)
+        error = 32 * d**2 * UNIT * np.sum(reach**2, axis=(1, 2))
+        if np.any(self.diffusion):
+            size = np.einsum("cmab,m->cab", np.abs(self.diffusion), suprema(d, self.diffusion.shape[1]))
+            floor = self.diffusion_floor
+            least = np.linalg.eigvalsh(floor)[:, 0]
+            metric = inverse @ floor @ inverse.swapaxes(1, 2)
+            values = np.linalg.eigvalsh((metric + metric.swapaxes(1, 2)) / 2)
+            if not (np.all(least > 0) and np.all(values[:, 0] > 1e-12 * values[:, -1])):
+                return np.inf
+            rounding = np.abs(inverse) @ size @ np.abs(inverse).swapaxes(1, 2)
+            error += gamma(8 * d) * np.linalg.norm(rounding, axis=(1, 2)) / values[:, 0]
+            missed = np.abs(spans @ inverse - np.eye(d)) + gamma(2 * d) * np.abs(spans) @ np.abs(inverse)
+            once = missed @ size
+            changed = once + once.swapaxes(1, 2) + once @ missed.swapaxes(1, 2)
+            half = np.abs(np.linalg.inv(np.linalg.cholesky(floor)))
+            error += np.linalg.norm(half @ changed @ half.swapaxes(1, 2), axis=(1, 2))
+        return float(1.1 * np.max(error))
 
     @cached_property
     def uncertainty(self) -> float:
