@@ -29,6 +29,25 @@ class Factorisation:
     solver: "qdldl.Solver"
 
 
+def eliminate(matrix: csc_matrix) -> "qdldl.Solver":
+    """Sparse elimination of a symmetric matrix without pivoting.
+
+    Raises
+    ------
+    SingularPivotError
+        If a pivot vanishes.
+    """
+    try:
+        return qdldl.Solver(csc_matrix(triu(matrix)), upper=True)
+    except RuntimeError as error:
+        raise SingularPivotError(str(error)) from error
+
+
+def negatives(matrix: csc_matrix) -> int:
+    """Negative pivots, as computed and unproved."""
+    return int(np.sum(eliminate(matrix).factors()[1] < 0))
+
+
 def factorise(matrix: csc_matrix) -> Factorisation:
     """Factorises a symmetric matrix and bounds the residual a posteriori.
 
@@ -41,10 +60,7 @@ def factorise(matrix: csc_matrix) -> Factorisation:
         If a pivot vanishes or overflows.
     """
     size = matrix.shape[0]
-    try:
-        solver = qdldl.Solver(csc_matrix(triu(matrix)), upper=True)
-    except RuntimeError as error:
-        raise SingularPivotError(str(error)) from error
+    solver = eliminate(matrix)
     lower, pivots, order = solver.factors()
     lower = csc_matrix(lower) + identity(size, format="csc")
     if not np.all(np.isfinite(pivots)) or np.any(pivots == 0):
@@ -65,13 +81,11 @@ def smallest_eigenvalue_bound(matrix: csc_matrix) -> float:
 
     Inverse iteration gives a guess, a factorisation of the matrix shifted by it the proof.
     """
-    first = factorise(matrix)
-    if first.negative:
-        return 0.0
+    first = eliminate(matrix)
     vector = np.ones(matrix.shape[0])
     norm = 1.0
     for _ in range(6):
-        vector = first.solver.solve(vector / np.linalg.norm(vector))
+        vector = first.solve(vector / np.linalg.norm(vector))
         norm = float(np.linalg.norm(vector))
     guess = 0.5 / norm
     second = factorise(csc_matrix(matrix - guess * identity(matrix.shape[0], format="csc")))

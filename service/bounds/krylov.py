@@ -12,18 +12,22 @@ Array = NDArray[np.float64]
 Operator = Callable[[Array], Array]
 
 
-def orthonormalise(block: Array, mass: Operator) -> Array:
-    """A basis of the span of ``block`` (n, b), orthonormal in the mass inner product; drops dependent columns."""
-    norms = sizes(block, mass)
-    block = block[:, norms > 0] / norms[norms > 0]
-    values, vectors = np.linalg.eigh(block.T @ mass(block))
+def orthonormalise(block: Array, heavy: Array) -> tuple[Array, Array]:
+    """A basis of the span of ``block`` (n, b), orthonormal in the mass inner product, and the mass times it.
+
+    ``heavy`` is the mass times the block. Drops dependent columns.
+    """
+    norms = sizes(block, heavy)
+    block, heavy = block[:, norms > 0] / norms[norms > 0], heavy[:, norms > 0] / norms[norms > 0]
+    values, vectors = np.linalg.eigh(block.T @ heavy)
     keep = values > 1e-13 * values[-1]
-    return np.asarray(block @ (vectors[:, keep] / np.sqrt(values[keep])))
+    turn = vectors[:, keep] / np.sqrt(values[keep])
+    return np.asarray(block @ turn), np.asarray(heavy @ turn)
 
 
-def sizes(block: Array, mass: Operator) -> Array:
-    """Norms of the columns."""
-    return np.asarray(np.sqrt(np.maximum(np.einsum("ij,ij->j", block, mass(block)), 0.0)))
+def sizes(block: Array, heavy: Array) -> Array:
+    """Norms of the columns, given the mass times them."""
+    return np.asarray(np.sqrt(np.maximum(np.einsum("ij,ij->j", block, heavy), 0.0)))
 
 
 def smallest_pairs(
@@ -53,28 +57,31 @@ def smallest_pairs(
     """
     size = start.shape[1]
     # One application of the inverse first: it removes what the mass matrix does not see.
-    block = orthonormalise(inverse(mass(start)), mass)
+    block = inverse(mass(start))
     before = np.full(wanted, np.inf)
     values, vectors = np.zeros(0), block
     for _ in range(rounds):
-        basis = block
-        image = inverse(mass(block))
+        basis, heavy = orthonormalise(block, mass(block))
+        image = inverse(heavy)
         images = [image]
         for _ in range(depth - 1):
-            fresh, length = image, sizes(image, mass)
-            for _ in range(2):
-                fresh = fresh - basis @ (basis.T @ mass(fresh))
+            inside = heavy.T @ image
+            fresh = image - basis @ inside
+            fresh = fresh - basis @ (heavy.T @ fresh)
+            weighed = mass(fresh)
+            length = sizes(fresh, weighed)
             # What is left of a direction that is in the space already is rounding.
-            left = sizes(fresh, mass) > 1e-9 * length
+            left = length > 1e-9 * np.sqrt(length**2 + np.sum(inside**2, axis=0))
             if not np.any(left):
                 break
-            fresh = orthonormalise(fresh[:, left], mass)
-            fresh = fresh - basis @ (basis.T @ mass(fresh))
-            basis = np.hstack([basis, fresh])
-            image = inverse(mass(fresh))
+            fresh, weighed = orthonormalise(fresh[:, left], weighed[:, left])
+            again = heavy.T @ fresh
+            fresh, weighed = fresh - basis @ again, weighed - heavy @ again
+            basis, heavy = np.hstack([basis, fresh]), np.hstack([heavy, weighed])
+            image = inverse(weighed)
             images.append(image)
         applied = np.hstack(images)
-        projected = basis.T @ mass(applied)
+        projected = heavy.T @ applied
         inverted, coefficients = np.linalg.eigh((projected + projected.T) / 2)
         order = np.argsort(-inverted)[:size]
         values = 1.0 / inverted[order]
@@ -83,5 +90,5 @@ def smallest_pairs(
             break
         before = values[:wanted]
         # One more application of the inverse smooths the restart for free.
-        block = orthonormalise(applied @ coefficients[:, order], mass)
+        block = applied @ coefficients[:, order]
     return values, vectors

@@ -1,4 +1,4 @@
-"""How many negative directions a quadratic form has: a nonconforming minorant of any order, counted and proved.
+"""A nonconforming minorant of any order of a quadratic form: a matrix with no fewer negative directions.
 
 For u in V keep, on each cell, its L2 projection u_T on polynomials of order k + 1 and, on each facet, the
 projection u_F of its
@@ -28,7 +28,7 @@ keeping moments in cells and on facets is that of hybrid high-order methods, Di 
 1-21.)
 """
 
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 from functools import cached_property
 from math import factorial, pi
 
@@ -37,7 +37,6 @@ from numpy.typing import NDArray
 from scipy.sparse import csc_matrix
 
 from service.bounds.condensed import Numbering, assemble
-from service.bounds.inertia import SingularPivotError, factorise, smallest_eigenvalue_bound
 from service.bounds.rounding import gamma
 from service.elements.jet import simplex_dimension
 from service.elements.moments import MOMENT_ERROR, MomentReference, moment_reference
@@ -54,9 +53,6 @@ SHARE = 0.5
 
 LARGEST_NEED = 0.85
 """The largest part of the error's energy that negative potentials may take."""
-
-LARGEST_RESERVE = 0.3
-"""The largest share of a positive form that may be set aside to pay for rounding."""
 
 
 class TooCoarseError(ArithmeticError):
@@ -119,7 +115,7 @@ class Minorant:
         lifts[:, 1:low] = np.linalg.solve(inner, right)
         lifts[:, 0, 0] = 1.0
 
-        shares = self._shares()
+        shares = self.shares()
         potentials = self._potential(shares), self._facet_potential(shares)
         local = compose(stiffness, flux, lifts, trace, shares, potentials)
         if not bounded:
@@ -137,7 +133,7 @@ class Minorant:
         )
         return (local + local.swapaxes(1, 2)) / 2, (4 * MOMENT_ERROR + gamma(4 * n + modes * d * d + 24)) * bounds
 
-    def _shares(self) -> "Shares":
+    def shares(self) -> "Shares":
         """How the energy of e is spent on each cell."""
         form = self.form
         d = form.mesh.dimension
@@ -287,64 +283,9 @@ def poincare_constants(form: Form) -> Array:
     corners = np.concatenate([np.zeros((len(mesh.cells), mesh.dimension, 1)), mesh.spans], axis=2)
     first, second = np.triu_indices(mesh.dimension + 1, 1)
     edges = corners[:, :, second] - corners[:, :, first]
-    stretched = np.linalg.solve(form.diffusion_floor, edges)
-    longest = np.max(np.einsum("cai,cai->ci", edges, stretched), axis=1)
-    return np.asarray(np.sqrt(longest) / POINCARE[mesh.dimension] * (1 + 1e-9 + 2 * form.metric_error))
-
-
-def reaches(form: Form) -> bool:
-    """Whether the cells are small enough for a minorant of the form."""
-    try:
-        Minorant(form, 1)._shares()
-    except TooCoarseError:
-        return False
-    return True
-
-
-def count(form: Form, order: int) -> int | None:
-    """Negative eigenvalues of N as computed, unproved; None where the mesh is too coarse or a pivot vanishes."""
-    try:
-        condensed = Minorant(form, order).condensed(bounded=False)
-        return None if condensed is None else factorise(condensed[0]).negative
-    except (TooCoarseError, SingularPivotError):
-        return None
-
-
-def proves(form: Form, order: int, most: int, scale: float) -> bool:
-    """Whether every true form that ``form`` may stand for is proved to have at most ``most`` negative directions on
-    V.
-
-    Q = (Q - h P) + h P with P[u] = int G grad u . grad u + scale int u^2 and a small h: N[Q - h P] + h N[P] is a
-    minorant too.
-    The facet matrix of P is proved to be >= g I, and that of Q - h P is factorised up to an error E: |E| <= h g
-    makes the
-    count of the factors a proof (Sylvester, Weyl).
-    """
-    if form.uncertainty > LARGEST_RESERVE:
-        return False
-    cells, facets = len(form.mesh.cells), len(form.mesh.facets)
-    form = form.moved(-1.0)
-    positive = replace(form, potential=np.full((cells, 1), scale), facet=np.zeros((facets, 1)))
-    try:
-        above = Minorant(positive, order).condensed()
-        if above is None:
-            return False
-        ground = smallest_eigenvalue_bound(above[0]) - above[1]
-        reserve = 4 * above[1] / ground if ground > 0 else 1.0
-        # A first guess of what rounding takes, then, if that was too little, what it took.
-        for _ in range(2):
-            if reserve > LARGEST_RESERVE:
-                return False
-            below = Minorant(form.plus(positive, -reserve), order).condensed()
-            if below is None:
-                return False
-            factors = factorise(below[0])
-            if factors.negative > most:
-                return False
-            taken = factors.residual + below[1]
-            if taken <= 0.99 * reserve * ground:
-                return True
-            reserve = 1.5 * taken / ground
-    except (TooCoarseError, SingularPivotError):
-        return False
-    return False
+    factor = np.linalg.cholesky(form.diffusion_floor)
+    half = np.linalg.inv(factor)
+    longest = np.max(np.linalg.norm(half @ edges, axis=1), axis=1)
+    # Cholesky's backward error, and the rounding of the products, against the lengths they make.
+    lost = gamma(16 * mesh.dimension) * np.sum((np.abs(half) @ np.abs(factor)) ** 2, axis=(1, 2))
+    return np.asarray(longest / POINCARE[mesh.dimension] * (1 + 1e-9 + lost + 2 * form.metric_error))

@@ -9,15 +9,16 @@ import numpy as np
 from numpy.typing import NDArray
 
 from service.bounds.condensed import NotPositiveError
-from service.bounds.counting import reaches
 from service.bounds.enclosure import UNKNOWN, Enclosure
 from service.bounds.flux import FluxSpace
 from service.bounds.lehmann import goerisch_gram, lower_bounds, upper_bounds
+from service.bounds.proof import reaches
 from service.bounds.ritz import TrialSpace
 from service.bounds.rounding import down, up
 from service.bounds.separation import (
     CLEAR_GAP,
     LEAST_GAP,
+    SMALL_GAP,
     Separation,
     counted_bound,
     gap_above,
@@ -37,11 +38,17 @@ LARGEST_ERROR = 0.1
 FIRST_ORDER = 3
 """Order of the first look at the spectrum."""
 
-LOOK_AHEAD = 12
+LOOK_AHEAD = 24
 """How many eigenvalues beyond the wanted one are searched for a gap before counting alone must do."""
+
+NEAR = 0.2
+"""Least distance of a shift from the first ratio, relative to it."""
 
 FIRST_SIZE = 0.5
 """Longest edges of the first mesh, in mesh units (the diameter is between 1 and 2)."""
+
+GLANCE_CELLS = 3000
+"""Cells from which a mesh is first looked at with the lowest orders, to have something early."""
 
 MINORANT_CELLS = 6000
 """Cells up to which a mesh is refined just to cut the spectrum."""
@@ -113,6 +120,18 @@ def positive_shift(pencil: Pencil, ratio: float) -> float:
     return float(2.0 ** round(math.log2(least) + (0.5 if least > abs(ratio) + 1e-300 else 0.0)))
 
 
+def glance(pencil: Pencil, index: int, budget: Budget) -> Iterator[tuple[Enclosure, int]]:
+    """What the lowest orders prove on a mesh, and with how many unknowns: above first, then below."""
+    space = TrialSpace(pencil, 2)
+    ratios, functions = first_pairs(space, index)
+    uncut = Separation(0, 0.0, 0.0, pencil)
+    above = sharpen(pencil, index, uncut, 2, functions, ratios)
+    unknowns = space.numbering.size
+    yield above, unknowns
+    if math.isfinite(above.upper) and reaches(pencil.at(above.upper)):
+        yield count_below(pencil, above, index, 2, budget), unknowns
+
+
 @dataclass(frozen=True)
 class Prospect:
     """A first look at the spectrum on a mesh: trial functions of low order, and where the spectrum is cut.
@@ -145,9 +164,15 @@ def look(
         ritz = ratios[:wanted]
         sharp = can_sharpen(pencil)
         size, gap = gap_above(ritz, index) if sharp and len(ritz) > index else (0, 0.0)
-        if not sharp or gap >= CLEAR_GAP or ahead >= LOOK_AHEAD or len(ritz) < wanted:
+        enough = CLEAR_GAP if ahead < LOOK_AHEAD // 2 else LEAST_GAP
+        hopeless = ahead >= LOOK_AHEAD // 2 and gap < LEAST_GAP / 2
+        if not sharp or gap >= enough or hopeless or ahead >= LOOK_AHEAD or len(ritz) < wanted:
             break
         ahead *= 2
+    if LEAST_GAP / 2 <= gap < SMALL_GAP:
+        ratios, functions = next_pairs(space, ratios, wanted, 0.1 * LEAST_GAP, functions)
+        ritz = ratios[:wanted]
+        size, gap = gap_above(ritz, index)
     useful = gap >= LEAST_GAP
     goal = float(ritz[size if useful else index - 1])
     fine = reachable(pencil, pencil_on, refined, goal, cells)
@@ -182,6 +207,16 @@ def first_pairs(space: TrialSpace, wanted: int) -> tuple[Array, Array]:
             if shift == 0.0:
                 raise
             shift *= 8
+
+
+def next_pairs(space: TrialSpace, before: Array, wanted: int, tolerance: float, start: Array) -> tuple[Array, Array]:
+    """The same ratios again, in a richer space or to more digits: iterated near the first one, where the spectrum is
+    spread widest, if that leaves the operator positive definite."""
+    first, last = float(before[0]), float(before[wanted - 1])
+    try:
+        return space.smallest(max(last - first, NEAR * abs(first)) - first, wanted, tolerance, start)
+    except NotPositiveError:
+        return space.smallest(max(abs(last), -2 * first), wanted, tolerance, start)
 
 
 def shrink_to(pencil: Pencil, goal: float) -> float:
@@ -223,6 +258,12 @@ def enclose(
                 raise
             return
         pencil = pencil_on(mesh)
+        if len(mesh.cells) > GLANCE_CELLS:
+            for found, unknowns in glance(pencil, index, budget):
+                known = known.intersect(found)
+                yield Step(known, mesh, level, 2, unknowns, time.monotonic() - begun)
+            if known.width <= budget.width or not budget.affords(time.monotonic() - begun, 0):
+                return
         order = FIRST_ORDER
         space = TrialSpace(pencil, order)
         prospect = look(pencil, pencil_on, refined, space, index, max(MINORANT_CELLS, 2 * len(mesh.cells)))
@@ -233,7 +274,7 @@ def enclose(
             # Trial functions of low order may be too poor for a cut that is proved: count only to have something.
             counting = not cut.count or not math.isfinite(known.lower)
             if prospect.shrink is None and counting and not math.isfinite(found.lower):
-                found = found.intersect(count_below(cut.pencil, found.upper, index, order, budget.width))
+                found = found.intersect(count_below(cut.pencil, known.intersect(found), index, order, budget))
             known = known.intersect(found)
             widths.append(found.width)
             cost = time.monotonic() - begun
@@ -252,8 +293,7 @@ def enclose(
             space = TrialSpace(pencil, following)
             start = space.extend(functions[:, :, : used + 2], order)
             tolerance = 1e-2 * budget.width
-            shift = max(abs(float(ratios[index - 1])), -2 * float(ratios[0]))
-            ratios, functions = space.smallest(shift, used, tolerance, start)
+            ratios, functions = next_pairs(space, ratios, used, tolerance, start)
             order = following
         level += 1
         shrink = 0.5 if prospect.shrink is None else min(0.5, prospect.shrink)
@@ -262,10 +302,10 @@ def enclose(
             return
 
 
-def count_below(pencil: Pencil, estimate: float, index: int, order: int, width: float) -> Enclosure:
+def count_below(pencil: Pencil, known: Enclosure, index: int, order: int, budget: Budget) -> Enclosure:
     """What counting alone proves, where no gap in the spectrum lets the sharp bounds work."""
     rank = min(order - 1, 4)
-    bound = counted_bound(pencil, estimate, index, rank, width)
+    bound = counted_bound(pencil, known.upper, index, rank, budget.width, known.lower, budget.deadline)
     by = f"nonconforming minorant of order {rank}, inertia count"
     return Enclosure(bound, math.inf, lower_by=by)
 

@@ -1,13 +1,14 @@
 """A proved rough bound rho above the wanted eigenvalue and below the rest, and lower bounds by counting alone."""
 
 import math
+import time
 from collections.abc import Callable
 from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
 
-from service.bounds.counting import count, proves, reaches
+from service.bounds.proof import Prover, count, reaches
 from service.forms.form import Pencil
 from service.meshing.mesh import Mesh
 
@@ -16,8 +17,14 @@ Array = NDArray[np.float64]
 CLEAR_GAP = 0.3
 """Relative gap in the spectrum that is worth stopping at."""
 
-LEAST_GAP = 0.01
+SMALL_GAP = 0.1
+"""Relative gap that takes exact values and high orders to prove."""
+
+LEAST_GAP = 0.002
 """Relative gap that still helps."""
+
+BISECTIONS = 6
+"""How often the distance of a counted bound is halved on a logarithmic scale."""
 
 
 @dataclass(frozen=True)
@@ -49,12 +56,6 @@ def reachable(
     return pencil
 
 
-def scale_of(pencil: Pencil, value: float) -> float:
-    """A potential of the size of what is counted, for the form that pays for rounding."""
-    stiff = float(np.mean(np.trace(pencil.energy.diffusion[:, 0], axis1=1, axis2=2)))
-    return max(stiff, abs(value) * float(np.mean(pencil.weight.potential[:, 0])))
-
-
 def gap_above(ritz: Array, index: int) -> tuple[int, float]:
     """Where to cut above the ratio ``index``: after which ratio, and how wide the gap is relative to the next one.
 
@@ -72,36 +73,54 @@ def separate(pencil: Pencil, ritz: Array, size: int) -> Separation:
     pencil : on a mesh fine enough for minorants at ritz[size].
     """
     below, above = float(ritz[size - 1]), float(ritz[size])
-    for order in (1, 2, 3) if len(pencil.mesh.cells) > 1500 else (2, 3, 1):
+    orders = (1, 2, 3) if len(pencil.mesh.cells) > 1500 else (2, 3, 1)
+    for order in (3, 4, 5) if above - below < SMALL_GAP * abs(above) else orders:
+        prover = Prover(pencil, order, above)
         for part in (0.8, 0.5, 0.25):
             rho = below + part * (above - below)
-            if proves(pencil.at(rho), order, size, scale_of(pencil, rho)):
+            if prover.proves(rho, size):
                 return Separation(size, rho, (rho - below) / abs(above), pencil)
     return Separation(0, 0.0, 0.0, pencil)
 
 
-def counted_bound(pencil: Pencil, estimate: float, index: int, order: int, width: float) -> float:
+def counted_bound(
+    pencil: Pencil,
+    estimate: float,
+    index: int,
+    order: int,
+    width: float,
+    known: float = -math.inf,
+    deadline: float = math.inf,
+) -> float:
     """A proved lower bound of tau_index by counting alone, -inf where there is none.
 
-    Bisects the distance below the upper bound ``estimate``, relative and on a logarithmic scale from ``width`` /
-    100.
+    Bisects the distance below the upper bound ``estimate``, relative and on a logarithmic scale, from ``width``
+    / 100 to that of a bound that is ``known``. Halves it less often where the ``deadline`` is near.
     """
-    low, high = math.log(width / 100), math.log(2.0)
     size = abs(estimate)
+    low = math.log(width / 100)
+    high = math.log(min(2.0, max((estimate - known) / size, 2 * width / 100)))
 
     def value(distance: float) -> float:
         return estimate - size * math.exp(distance)
 
-    for _ in range(7):
+    for _ in range(BISECTIONS):
+        begun = time.monotonic()
         middle = (low + high) / 2
         found = count(pencil.at(value(middle)), order)
         if found is not None and found < index:
             high = middle
         else:
             low = middle
+        # A proof takes about as long as four counts.
+        if time.monotonic() + 5 * (time.monotonic() - begun) > deadline:
+            break
     # What the proof sets aside for rounding may be more than this distance: then step back.
+    prover = Prover(pencil, order, estimate)
     for back in range(8):
         t = value(min(high + 2.0 * back, 0.0))
-        if proves(pencil.at(t), order, index - 1, scale_of(pencil, t)):
+        if prover.proves(t, index - 1):
             return t
+        if time.monotonic() > deadline:
+            break
     return -math.inf

@@ -15,6 +15,7 @@ _FRONTAL = 6
 _LINE = 1
 _SURFACE = 1
 _ROTATION = np.array([[np.cos(1.0), np.sin(1.0)], [-np.sin(1.0), np.cos(1.0)]])
+_MANY = 500
 _OPTIONS = {
     "General.Terminal": 0,
     "General.NumThreads": 1,
@@ -41,7 +42,6 @@ def fill(
     loops: NDArray[np.int64],
     sizes: SizeFunction,
     interfaces: NDArray[np.int64] | None = None,
-    turned: bool = False,
 ) -> tuple[NDArray[np.float64], NDArray[np.int64]]:
     """Triangulate the region to the left of the boundary pieces, none of which is cut.
 
@@ -53,8 +53,6 @@ def fill(
     sizes : element size inside.
     interfaces : (j, 2) pieces inside, which become sides of triangles; their ends are no inner points of
         other pieces.
-    turned : show gmsh the domain turned by some angle. Thousands of pieces on each of two lines parallel
-        to an axis take it minutes otherwise.
 
     Returns
     -------
@@ -65,7 +63,8 @@ def fill(
     ComputationError
         ``meshing-failed`` when gmsh gives up or changes the boundary.
     """
-    rotation = _ROTATION if turned else np.eye(2)
+    # Thousands of pieces on each of two lines parallel to an axis take gmsh minutes, on slanted lines seconds.
+    rotation = _ROTATION if len(edges) > _MANY else np.eye(2)
     try:
         with _session():
             shown = points @ rotation

@@ -81,7 +81,7 @@ def _triangulate_within(
         points = np.vstack([outline.points, narrow])
         sizes = size_function(points, np.concatenate([outline.wanted, narrow_sizes]), size)
         try:
-            return _triangulate(outline, sizes, target, max_cells, turned=len(narrow) > 0)
+            return _triangulate(outline, sizes, target, max_cells)
         except ComputationError as error:
             if error.kind != "mesh-too-large" or not len(narrow):
                 raise
@@ -89,7 +89,7 @@ def _triangulate_within(
 
 
 def _triangulate(
-    outline: Outline, sizes: SizeFunction, target: float, max_cells: int, turned: bool
+    outline: Outline, sizes: SizeFunction, target: float, max_cells: int
 ) -> tuple[Triangulation, NDArray[np.int64]]:
     """Cut the outline, fill it, and keep singular points apart: triangles, and layers at every vertex."""
     points, size, count = outline.points, sizes.size, len(outline.points)
@@ -103,7 +103,7 @@ def _triangulate(
     _check_count(max(known, int(outline_area(outline) / size**2)), max_cells)
 
     loops = outline.loops[cut.parent[outer]]
-    every, triangles = fill(cut.points, cut.edges[outer], loops, sizes, cut.edges[~outer], turned)
+    every, triangles = fill(cut.points, cut.edges[outer], loops, sizes, cut.edges[~outer])
     reach = np.minimum(_longest_at(every, triangles)[:count], _REACH * outline.wanted)
     layers = np.zeros(len(every), dtype=np.int64)
     layers[:count] = outline.layers(reach, target)

@@ -12,7 +12,7 @@ from scipy.linalg import eigh
 from scipy.special import jn_zeros
 from small_meshes import nowhere, random_triangles, triangle
 
-from service.bounds.counting import POINCARE, poincare_constants
+from service.bounds.minorant import POINCARE, poincare_constants
 from service.elements.moments import moment_reference
 from service.forms.form import constant_form
 from service.meshing.mesh import Mesh

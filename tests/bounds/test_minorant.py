@@ -14,9 +14,10 @@ from small_meshes import (
     square_ratios,
 )
 
-from service.bounds import counting, separation
-from service.bounds.counting import Minorant, count, proves, reaches
-from service.bounds.separation import counted_bound, reachable, scale_of, separate
+from service.bounds import proof, separation
+from service.bounds.minorant import Minorant
+from service.bounds.proof import Prover, count, reaches
+from service.bounds.separation import counted_bound, reachable, separate
 from service.forms.form import Pencil, laplace
 from service.meshing.mesh import Mesh
 from service.meshing.refine import refine
@@ -56,7 +57,7 @@ def test_nothing_false_is_proved(name: str, order: int) -> None:
     for k in (1, 2, 3, 4, 5, 6):
         t = exact[k - 1] * (1 + 1e-9) + 1e-9
         most = int(np.sum(exact < t)) - 1
-        assert not proves(pencil.at(t), order, most, scale_of(pencil, t))
+        assert not Prover(pencil, order, t).proves(t, most)
 
 
 @pytest.mark.parametrize(("order", "gap"), [(1, 6e-2), (2, 3e-3), (3, 2e-4), (4, 1e-4)])
@@ -97,11 +98,11 @@ def test_counts_that_lie_do_not_make_bounds(monkeypatch: pytest.MonkeyPatch) -> 
 
 def test_a_factorisation_with_a_large_residual_proves_nothing(monkeypatch: pytest.MonkeyPatch) -> None:
     pencil, exact = square_pencil(square(4), "held")
-    form, scale = pencil.at(0.9 * exact[0]), scale_of(pencil, exact[0])
-    assert proves(form, 2, 0, scale)
-    plain = counting.factorise
-    monkeypatch.setattr(counting, "factorise", lambda matrix: replace(plain(matrix), residual=0.1))
-    assert not proves(form, 2, 0, scale)
+    prover = Prover(pencil, 2, exact[0])
+    assert prover.proves(0.9 * exact[0], 0)
+    plain = proof.factorise
+    monkeypatch.setattr(proof, "factorise", lambda matrix: replace(plain(matrix), residual=0.1))
+    assert not prover.proves(0.9 * exact[0], 0)
 
 
 def test_meshes_are_refined_until_the_minorant_reaches() -> None:

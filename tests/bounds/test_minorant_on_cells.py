@@ -9,8 +9,9 @@ from numpy.typing import NDArray
 from scipy.linalg import eigh
 from small_meshes import nowhere, random_triangles
 
-from service.bounds import counting
-from service.bounds.counting import Minorant, reaches
+from service.bounds import minorant
+from service.bounds.minorant import Minorant
+from service.bounds.proof import reaches
 from service.elements import moments
 from service.elements.jet import simplex_polynomials
 from service.elements.moments import moment_reference
@@ -66,7 +67,7 @@ def test_the_minorant_is_one_on_every_triangle(order: int) -> None:
         rotation = np.linalg.qr(random.standard_normal((2, 2)))[0]
         diffusion = rotation * 10.0 ** random.uniform(-1, 1, 2) @ rotation.T
         free = form_of(mesh, diffusion, 0.0)
-        poincare = float(counting.poincare_constants(free)[0])
+        poincare = float(minorant.poincare_constants(free)[0])
         for need in (-3.0, 0.0, 0.4, 0.84):
             form = form_of(mesh, diffusion, -need / poincare**2)
             local, bound = (part[0] for part in Minorant(form, order).local())
@@ -100,14 +101,14 @@ def test_the_minorant_is_exact_on_its_own_polynomials(order: int) -> None:
 def composed(form: Form, order: int) -> tuple[Any, ...]:
     """What the code composes the minorant from: stiffness, flux, lifts, trace, shares, potentials."""
     seen: list[tuple[Any, ...]] = []
-    plain = counting.compose
+    plain = minorant.compose
 
     def remember(*arguments: Any, **options: Any) -> Array:
         seen.append(arguments)
         return plain(*arguments, **options)
 
     with pytest.MonkeyPatch.context() as patch:
-        patch.setattr(counting, "compose", remember)
+        patch.setattr(minorant, "compose", remember)
         Minorant(form, order).local()
     return seen[0]
 
@@ -125,7 +126,7 @@ def test_the_energy_of_the_error_is_spent_once(isotropic: bool) -> None:
         rotation = np.linalg.qr(random.standard_normal((2, 2)))[0]
         diffusion = np.eye(2) if isotropic else rotation * 10.0 ** random.uniform(-2, 2, 2) @ rotation.T
         free = form_of(mesh, diffusion, 0.0)
-        poincare = float(counting.poincare_constants(free)[0])
+        poincare = float(minorant.poincare_constants(free)[0])
         for need in (0.0, 0.6, 0.84):
             form = form_of(mesh, diffusion, -need / poincare**2)
             shares = composed(form, 1)[4]
@@ -159,7 +160,7 @@ def wide_local(form: Form, order: int) -> NDArray[np.longdouble]:
     potential = form.potential[:, 0].astype(np.longdouble) * form.jacobian
     inner = potential[:, None, None] * np.eye(stiffness.shape[1])
     outer = np.zeros((len(inner), trace.shape[0], trace.shape[0]), dtype=np.longdouble)
-    return np.asarray(counting.compose(stiffness, across, lifts.astype(np.longdouble), trace, shares, (inner, outer)))
+    return np.asarray(minorant.compose(stiffness, across, lifts.astype(np.longdouble), trace, shares, (inner, outer)))
 
 
 @pytest.mark.parametrize("order", [*ORDERS, 6])
@@ -171,7 +172,7 @@ def test_every_entry_is_as_exact_as_its_bound_says(order: int) -> None:
         rotation = np.linalg.qr(random.standard_normal((2, 2)))[0]
         diffusion = rotation * 10.0 ** random.uniform(-2, 2, 2) @ rotation.T
         free = form_of(mesh, diffusion, 0.0)
-        poincare = float(counting.poincare_constants(free)[0])
+        poincare = float(minorant.poincare_constants(free)[0])
         form = form_of(mesh, diffusion, float(random.uniform(-0.8, 0.8)) / poincare**2)
         local, bound = Minorant(form, order).local()
         wide = wide_local(form, order)
