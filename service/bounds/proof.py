@@ -62,6 +62,8 @@ class Prover:
     @cached_property
     def ground(self) -> tuple[float, float]:
         """g, and the allowance of the facet matrix of P; g = 0 where nothing is proved."""
+        if self.pencil.at(self.reference).uncertainty > LARGEST_RESERVE:
+            return 0.0, 0.0
         try:
             above = Minorant(self.positive, self.order).condensed()
             if above is None:

@@ -116,7 +116,7 @@ def counted_bound(
         if time.monotonic() + 5 * (time.monotonic() - begun) > deadline:
             break
     # What the proof sets aside for rounding may be more than this distance: then step back.
-    prover = Prover(pencil, order, estimate)
+    prover = Prover(pencil, order, value(high))
     for back in range(8):
         t = value(min(high + 2.0 * back, 0.0))
         if prover.proves(t, index - 1):
