@@ -8,7 +8,7 @@ from numpy.typing import NDArray
 from service.bounds.rounding import UNIT
 from service.elements.jet import simplex_dimension
 from service.elements.quadrature import simplex_rule
-from service.forms.form import coefficient_modes
+from service.forms.modes import coefficient_modes
 from service.meshing.mesh import Mesh
 from service.problem.expressions.errors import DerivativeError
 from service.problem.expressions.expression import Expression

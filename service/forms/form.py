@@ -4,15 +4,14 @@ One question carries every constant: what are the smallest ratios A[u]/B[u] over
 """
 
 from dataclasses import dataclass, replace
-from functools import cached_property, lru_cache
+from functools import cached_property
 
 import numpy as np
 from numpy.typing import NDArray
 
 from service.bounds.rounding import UNIT, gamma
-from service.elements.jet import simplex_dimension
-from service.elements.reference import raw_orthonormal, scalar_norms
-from service.elements.scalar import barycentric, subsimplices
+from service.elements.scalar import subsimplices
+from service.forms.modes import degree_of, suprema
 from service.meshing.mesh import Mesh
 
 Array = NDArray[np.float64]
@@ -214,41 +213,6 @@ def combined(first: Array, second: Array, factor: float) -> Array:
     result[:, : first.shape[1]] += first
     result[:, : second.shape[1]] += factor * second
     return result
-
-
-def degree_of(dimension: int, modes: int) -> int:
-    """The degree whose polynomials number ``modes`` at least."""
-    degree = 0
-    while simplex_dimension(dimension, degree) < modes:
-        degree += 1
-    return degree
-
-
-@lru_cache(maxsize=64)
-def suprema(dimension: int, modes: int) -> Array:
-    """Bounds of the largest absolute values of the coefficient modes on the unit simplex.
-
-    A polynomial lies within its Bernstein coefficients (Farouki, Comput. Aided Geom. Design 29 (2012)).
-    """
-    if dimension == 0 or modes == 1:
-        return np.ones(1)
-    degree = degree_of(dimension, modes)
-    grid = np.array([g for g in np.ndindex(*(degree + 1,) * dimension) if sum(g) <= degree]).T / max(degree, 1)
-    lam = np.array([jet[0] for jet in barycentric(grid)])
-    powers = np.rint(lam * degree).astype(int).T
-    factorial = np.concatenate([[1.0], np.cumprod(np.arange(1.0, degree + 1))])
-    bernstein = np.array(
-        [factorial[degree] / np.prod(factorial[power]) * np.prod(lam.T**power, axis=1) for power in powers]
-    )
-    values = coefficient_modes(dimension, modes, grid)
-    return np.asarray(np.max(np.abs(np.linalg.solve(bernstein.T, values.T)), axis=0) * (1 + 1e-9))
-
-
-def coefficient_modes(dimension: int, modes: int, points: Array) -> Array:
-    """Values (m, n) of the coefficient modes at points (d, n) of the unit simplex."""
-    degree = degree_of(dimension, modes)
-    norms = scalar_norms(dimension, degree)
-    return np.asarray(raw_orthonormal(dimension, degree, points, norms)[:modes, 0] * norms[0])
 
 
 def constant_form(

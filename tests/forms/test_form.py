@@ -10,12 +10,10 @@ from service.elements.quadrature import simplex_rule
 from service.forms.form import (
     Form,
     Pencil,
-    coefficient_modes,
     constant_form,
-    degree_of,
     laplace,
-    suprema,
 )
+from service.forms.modes import coefficient_modes, degree_of, suprema
 from service.meshing.facets import build_facets
 from service.meshing.mesh import Mesh
 from service.meshing.triangulation import sort_vertices
