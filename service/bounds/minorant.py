@@ -41,7 +41,8 @@ from service.bounds.rounding import gamma
 from service.elements.jet import simplex_dimension
 from service.elements.moments import MOMENT_ERROR, MomentReference, moment_reference
 from service.elements.reference import magnitude
-from service.forms.form import Form, degree_of
+from service.forms.form import Form
+from service.forms.modes import degree_of
 
 Array = NDArray[np.float64]
 

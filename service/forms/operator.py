@@ -12,6 +12,7 @@ with [b . n] = b1 . n1 + b2 . n2 of both sides' outward normals.
 from collections.abc import Callable
 from dataclasses import dataclass
 from functools import cached_property
+from operator import itemgetter
 from typing import TypeVar
 
 import numpy as np
@@ -86,16 +87,20 @@ class Discrete:
         )
 
     @cached_property
+    def tensor(self) -> tuple[Array, Array]:
+        """K by modes (nc, m, 2, 2), not symmetric in general, and a bound of the error in the 2-norm."""
+        entries = [self.on_cells(self.operator.diffusion, itemgetter(i)) for i in range(4)]
+        width = max(part.modes.shape[1] for part in entries)
+        matrix = np.stack([widened(part.modes, width) for part in entries], axis=2).reshape(-1, width, 2, 2)
+        k11, k12, k21, k22 = (part.error for part in entries)
+        return matrix, np.maximum(k11, k22) + np.maximum(k12, k21)
+
+    @cached_property
     def diffusion(self) -> tuple[Array, Array]:
         """sym K by modes (nc, m, 2, 2) and a bound of the error in the 2-norm."""
-        k = self.operator.diffusion
-        k11, k22 = self.on_cells(k, lambda m: m[0]), self.on_cells(k, lambda m: m[3])
-        k12 = (self.on_cells(k, lambda m: m[1]) + self.on_cells(k, lambda m: m[2])).times(0.5)
-        width = max(part.modes.shape[1] for part in (k11, k12, k22))
-        matrix = np.zeros((len(self.mesh.cells), width, 2, 2))
-        matrix[:, :, 0, 0], matrix[:, :, 1, 1] = widened(k11.modes, width), widened(k22.modes, width)
-        matrix[:, :, 0, 1] = matrix[:, :, 1, 0] = widened(k12.modes, width)
-        return matrix, np.maximum(k11.error, k22.error) + k12.error
+        matrix, error = self.tensor
+        matrix = (matrix + matrix.swapaxes(2, 3)) / 2
+        return matrix, error + 4 * UNIT * np.abs(matrix).sum(axis=(1, 2, 3))
 
     @cached_property
     def normals(self) -> Array:
@@ -120,9 +125,8 @@ class Discrete:
             velocity.components, lambda v: v[1], side, facets
         ).times(normal[:, 1])
 
-    @cached_property
-    def facet_terms(self) -> Approximation:
-        """r and the interface terms on all facets, 0 where there are none."""
+    def facet_terms(self, flow: float, jump: float) -> Approximation:
+        """alpha + ``flow`` b . n on the boundary off the Dirichlet part, ``jump`` [b . n] on interfaces, else 0."""
         mesh, operator = self.mesh, self.operator
         terms: list[tuple[NDArray[np.int64], Approximation]] = []
         for number, part in enumerate(self.request.domain.parts):
@@ -131,17 +135,16 @@ class Discrete:
                 continue
             if part.exchange is not None:
                 terms.append((facets, self.on_facets(part.exchange, lambda e: e, 0, facets)))
-            if operator.velocity is not None:
-                terms.append((facets, self.normal_velocity(facets, 0).times(0.5)))
-        if isinstance(operator.velocity, Field) and len(operator.velocity.components.entries) > 1:
+            if operator.velocity is not None and flow:
+                terms.append((facets, self.normal_velocity(facets, 0).times(flow)))
+        if isinstance(operator.velocity, Field) and len(operator.velocity.components.entries) > 1 and jump:
             chosen, _ = self.entries(operator.velocity.components)
             inner = np.flatnonzero(mesh.facet_cells[:, 1] >= 0)
             sides = chosen[mesh.facet_cells[inner]]
             jumping = inner[sides[:, 0] != sides[:, 1]]
             if len(jumping):
-                jump = self.normal_velocity(jumping, 0) + self.normal_velocity(jumping, 1).times(-1.0)
-                sign = 0.5 if operator.form == "convective" else -0.5
-                terms.append((jumping, jump.times(sign)))
+                difference = self.normal_velocity(jumping, 0) + self.normal_velocity(jumping, 1).times(-1.0)
+                terms.append((jumping, difference.times(jump)))
         width = max((term.modes.shape[1] for _, term in terms), default=1)
         modes, error = np.zeros((len(mesh.facets), width)), np.zeros(len(mesh.facets))
         for facets, term in terms:
@@ -149,31 +152,35 @@ class Discrete:
             error[facets] += term.error + 4 * UNIT * np.abs(modes[facets]).sum(axis=1)
         return Approximation(modes, error)
 
-    @cached_property
-    def potential(self) -> Approximation:
-        """c -+ div b / 2."""
+    def potential(self, divergence: float) -> Approximation:
+        """c + ``divergence`` div b."""
         total = self.on_cells(self.operator.reaction, lambda c: c)
         velocity = self.operator.velocity
-        if isinstance(velocity, Field) and not velocity.solenoidal:
-            sign = -0.5 if self.operator.form == "convective" else 0.5
+        if isinstance(velocity, Field) and not velocity.solenoidal and divergence:
             for part in (lambda v: v[0].derivative("x"), lambda v: v[1].derivative("y")):
-                total = total + self.on_cells(velocity.components, part).times(sign)
+                total = total + self.on_cells(velocity.components, part).times(divergence)
         return total
+
+    @cached_property
+    def skew_share(self) -> float:
+        """Factor of div b, and minus that of [b . n], in the symmetric part."""
+        return -0.5 if self.operator.form == "convective" else 0.5
 
     @cached_property
     def symmetric_part(self) -> Form:
         """a(u, u)."""
         unit = self.mesh.unit
         matrix, error = self.diffusion
-        facets = self.facet_terms.times(1 / unit)
+        potential = self.potential(self.skew_share)
+        facets = self.facet_terms(0.5, -self.skew_share).times(1 / unit)
         return Form(
             self.mesh,
             self.dirichlet,
             matrix / unit**2,
-            self.potential.modes,
+            potential.modes,
             facets.modes,
             error / unit**2,
-            self.potential.error,
+            potential.error,
             facets.error,
         )
 
