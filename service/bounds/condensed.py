@@ -62,6 +62,13 @@ class Numbering:
         return self.shared + self.bubbles * len(self.skeleton)
 
     @cached_property
+    def every(self) -> NDArray[np.int64]:
+        """(nc, ns + bubbles) numbers of all local coefficients."""
+        cells = len(self.skeleton)
+        own = self.shared + np.arange(cells * self.bubbles).reshape(cells, self.bubbles)
+        return np.concatenate([self.skeleton, own], axis=1)
+
+    @cached_property
     def gather(self) -> csr_matrix:
         """(nc ns, shared) matrix that copies shared unknowns into cells; its transpose adds cell loads up."""
         flat = self.skeleton.ravel()

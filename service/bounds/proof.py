@@ -24,6 +24,8 @@ def reaches(form: Form) -> bool:
 
 def count(form: Form, order: int) -> int | None:
     """Negative eigenvalues of N as computed, unproved; None where the mesh is too coarse or a pivot vanishes."""
+    if not np.isfinite(form.uncertainty):
+        return None
     try:
         condensed = Minorant(form, order).condensed(bounded=False)
         return None if condensed is None else negatives(condensed[0])

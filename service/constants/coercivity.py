@@ -1,7 +1,7 @@
 """Coercivity: a(v, v) >= C ||v||^2."""
 
 import math
-from collections.abc import Iterator
+from collections.abc import Callable, Iterator
 from dataclasses import replace
 
 import numpy as np
@@ -9,7 +9,7 @@ import numpy as np
 from service.bounds.enclosure import Enclosure
 from service.bounds.refine import Budget, Step
 from service.bounds.rounding import down, up
-from service.constants.base import Absent, Constant, MeshAt, Question, from_ratio
+from service.constants.base import Absent, Constant, MeshAt, Narrow, Question, from_ratio
 from service.constants.words import admissible, dirichlet_names, norm_words, operator_unit
 from service.forms.form import Form, Pencil
 from service.forms.operator import Discrete
@@ -31,16 +31,22 @@ def ask(request: Request) -> Question | Absent:
         discrete = Discrete(request, mesh)
         return Pencil(discrete.symmetric_part, discrete.norm)
 
+    statement = f"a(v,v) >= C ||v||^2 for {admissible(request)}; {norm_words(request)}"
+    return Question(request.domain, with_parts(pencil), statement, operator_unit(request))
+
+
+def with_parts(pencil: Callable[[Mesh], Pencil], answer: Callable[[Enclosure], Enclosure] = lambda tau: tau) -> Narrow:
+    """The first ratio of a pencil of an operator against a norm, or a function of it."""
+
     def narrow(mesh_at: MeshAt, budget: Budget) -> Iterator[Step]:
         for step in from_ratio(pencil)(mesh_at, budget):
             sides = by_parts(pencil(step.mesh))
-            better = replace(step, enclosure=step.enclosure.intersect(sides))
+            better = replace(step, enclosure=answer(step.enclosure.intersect(sides)))
             yield better
             if better.enclosure.width <= budget.width:
                 return
 
-    statement = f"a(v,v) >= C ||v||^2 for {admissible(request)}; {norm_words(request)}"
-    return Question(request.domain, narrow, statement, operator_unit(request))
+    return narrow
 
 
 def by_parts(pencil: Pencil) -> Enclosure:

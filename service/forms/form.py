@@ -157,6 +157,18 @@ class Form:
         """Whether coefficients are constant on each cell and there are no facet terms."""
         return self.diffusion.shape[1] == self.potential.shape[1] == 1 and not np.any(self.facet)
 
+    def times(self, factor: float) -> "Form":
+        """``factor`` times this form."""
+        return replace(
+            self,
+            diffusion=factor * self.diffusion,
+            potential=factor * self.potential,
+            facet=factor * self.facet,
+            diffusion_error=abs(factor) * self.diffusion_error,
+            potential_error=abs(factor) * self.potential_error,
+            facet_error=abs(factor) * self.facet_error,
+        )
+
     def plus(self, other: "Form", factor: float) -> "Form":
         """This form plus ``factor`` times another on the same mesh."""
         return replace(

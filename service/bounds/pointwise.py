@@ -1,0 +1,124 @@
+"""What coefficients prove point by point: how strongly a bilinear form couples values and gradients in a norm.
+
+A polynomial matrix is, everywhere on a cell, a convex combination of its control points, and |y . N x| <= s |x|_H |y|_H
+is the convex condition [[s H, N], [N^T, s H]] >= 0: it holds everywhere where it holds at the control points.
+"""
+
+import math
+from dataclasses import replace
+
+import numpy as np
+from numpy.typing import NDArray
+
+from service.bounds.proof import Prover
+from service.bounds.rounding import up
+from service.forms.bilinear import Bilinear
+from service.forms.form import Form, Pencil
+from service.forms.modes import control_points
+
+Array = NDArray[np.float64]
+
+SLACK = 1e-11
+"""Relative allowance for the rounding of control points and of small eigenvalue problems."""
+
+
+def controls(modes: Array, dimension: int) -> Array:
+    """Control points (n, c, ...) of polynomials given by modes (n, m, ...)."""
+    return np.asarray(np.einsum("cm,nm...->nc...", control_points(dimension, modes.shape[1]), modes))
+
+
+def widened(modes: Array, width: int) -> Array:
+    """Modes (n, m, ...) with zeros appended."""
+    return np.pad(modes, [(0, 0), (0, width - modes.shape[1])] + [(0, 0)] * (modes.ndim - 2))
+
+
+def coupling(form: Bilinear, norm: Form, skew: bool) -> tuple[Array, Array, Array]:
+    """Control points N, H (nc, c, d + 1, d + 1) of the form and the squared norm, and (nc, 3) errors of coefficients.
+
+    With x = (grad u, u), y = (grad v, v): a(u, v) = int y . N x but for facet terms, |u|^2 = int x . H x. With ``skew``
+    the form is one of ``bilinear(..., skew=True)``.
+    """
+    d = form.mesh.dimension
+    norm = norm.moved(-1.0)
+    parts = [form.diffusion, form.velocity, form.reaction, norm.diffusion, norm.potential]
+    width = max(part.shape[1] for part in parts)
+    k, b, c, g, w = (controls(widened(part, width), d) for part in parts)
+    matrix = np.zeros((*k.shape[:2], d + 1, d + 1))
+    heavy = np.zeros_like(matrix)
+    matrix[:, :, :d, :d], matrix[:, :, d, d] = k, c
+    matrix[:, :, d, :d] = b / 2 if skew else b
+    if skew:
+        matrix[:, :, :d, d] = -b / 2
+    heavy[:, :, :d, :d], heavy[:, :, d, d] = g, w
+    return matrix, heavy, np.stack([form.diffusion_error, form.velocity_error, form.reaction_error], axis=1)
+
+
+def strongest(form: Bilinear, norm: Form, skew: bool, friedrichs: float | None = None) -> float:
+    """A bound of |a(u, v)| / (|u| |v|) without facet terms; infinite where the cells are too coarse to tell.
+
+    friedrichs : C with |u|_L2 <= C |u|, where the norm has no term without derivatives.
+    """
+    d = form.mesh.dimension
+    matrix, heavy, error = coupling(form, norm, skew)
+    try:
+        if friedrichs is None:
+            root = np.linalg.inv(np.linalg.cholesky(heavy))
+            size = np.linalg.norm(root @ matrix @ root.swapaxes(2, 3), 2, axis=(2, 3)).max(axis=1)
+            flat = 1 / np.linalg.eigvalsh(heavy[:, :, :d, :d])[:, :, 0].min(axis=1)
+            low = 1 / heavy[:, :, d, d].min(axis=1)
+            size = size + error[:, 0] * flat + error[:, 1] * np.sqrt(flat * low) + error[:, 2] * low
+            return up(float(np.max(size)) * (1 + SLACK))
+        root = np.linalg.inv(np.linalg.cholesky(heavy[:, :, :d, :d]))
+    except np.linalg.LinAlgError:
+        return math.inf
+    flat = 1 / np.linalg.eigvalsh(heavy[:, :, :d, :d])[:, :, 0].min(axis=1)
+    steep = np.linalg.norm(root @ matrix[:, :, :d, :d] @ root.swapaxes(2, 3), 2, axis=(2, 3)).max(axis=1)
+    mixed = np.linalg.norm(np.einsum("ncij,ncj->nci", root, matrix[:, :, d, :d]), axis=2).max(axis=1)
+    plain = np.abs(matrix[:, :, d, d]).max(axis=1)
+    first = float(np.max(steep + error[:, 0] * flat))
+    second = float(np.max(mixed + error[:, 1] * np.sqrt(flat))) * (2 if skew else 1)
+    third = float(np.max(plain + error[:, 2]))
+    return up((first + second * friedrichs + third * friedrichs**2) * (1 + SLACK))
+
+
+def facet_size(form: Bilinear | Form) -> Array:
+    """(nf,) bound of |r| on each facet off the Dirichlet part, 0 elsewhere."""
+    worst = np.abs(controls(form.facet, form.mesh.dimension - 1)).max(axis=1) * (1 + SLACK) + form.facet_error
+    return np.where(form.dirichlet, 0.0, worst)
+
+
+def doubt(form: Bilinear, norm: Form, friedrichs: float | None = None) -> float:
+    """A bound of what the errors of the coefficients add to |a(u, v)| / (|u| |v|).
+
+    On facets: where |u|^2 - t int e u^2 is proved to have no negative direction, int e |u v| <= |u| |v| / t.
+    """
+    lower = norm.moved(-1.0)
+    flat = 1 / np.sqrt(np.linalg.eigvalsh(lower.diffusion_floor)[:, 0])
+    floor = lower.potential[:, 0] - lower.potential_swing
+    low = np.full(len(flat), friedrichs) if friedrichs is not None else 1 / np.sqrt(floor)
+    total = np.max(form.diffusion_error * flat**2)
+    total += np.max(form.velocity_error * flat * low) + np.max(form.reaction_error * low**2)
+    # The polynomials stand for the coefficients on cells that are off by the uncertainty of the mesh.
+    total += 4 * norm.uncertainty * (strongest(form, norm, False, friedrichs) + total)
+    error = np.where(form.dirichlet, 0.0, form.facet_error) + 4 * norm.uncertainty * facet_size(form)
+    return up(float(total)) + facet_doubt(norm, error)
+
+
+def facet_doubt(norm: Form, error: Array) -> float:
+    """A bound of int error u^2 over facets against |u|^2; infinite where none of those tried is proved."""
+    if not np.any(error):
+        return 0.0
+    none = np.zeros_like(norm.potential[:, :1])
+    mass = replace(norm, diffusion=np.zeros_like(norm.diffusion[:, :1]), potential=none, facet=error[:, None])
+    pencil = Pencil(norm, replace(mass, diffusion_error=none[:, 0], potential_error=none[:, 0]))
+    for t in (1e9, 1e7, 1e5, 1e3):
+        if Prover(pencil, 1, t).proves(t, 0):
+            return 1 / t
+    return math.inf
+
+
+def oscillation(energy: Form, norm: Form) -> float:
+    """A number not above the largest ratio of functions that oscillate in a cell: from the means of G there."""
+    root = np.linalg.inv(np.linalg.cholesky(norm.moved(1.0).diffusion[:, 0]))
+    ratios = np.linalg.eigvalsh(root @ energy.moved(-1.0).diffusion[:, 0] @ root.swapaxes(1, 2))
+    return float(np.max(ratios)) * (1 - SLACK)
