@@ -83,11 +83,13 @@ class FluxSpace:
         relative = 4 * REFERENCE_ERROR + gamma(2 * fields.shape[1] + 4 * self.form.mesh.dimension**2 + 16)
         return gram(fields, self.energy, self.local(absolute=True), relative)
 
-    def equilibrate(self, sources: Array) -> Array:
+    def equilibrate(self, sources: Array, outward: Array | None = None) -> Array:
         """Fields (nc, n, m) whose divergences are the given polynomials, up to rounding.
 
         sources : (nc, q, m) moments of h_i times the Jacobian against the orthonormal polynomials of the unit
         simplex.
+        outward : (nf, f, m) what the fields carry out of the cells beside a facet together, by coefficients of the
+        facet functions; nothing where None. Of no account on the Dirichlet part.
         """
         mesh, reference = self.form.mesh, self.reference
         cells, columns = len(mesh.cells), sources.shape[2]
@@ -119,16 +121,19 @@ class FluxSpace:
         numbering = Numbering(per[mesh.cell_facets].reshape(cells, -1), 0)
         factor = positive_solver(assemble(mobility, numbering.skeleton, numbering.shared))
         outflows = particular
+        wanted = np.zeros((len(mesh.facets), per_facet, columns)) if outward is None else outward
+        held = self.form.dirichlet
+        demand = np.where(held[:, None, None], 0.0, wanted)[~held].reshape(-1, columns)
         # The second pass refines the first: in the smallest cells the last digits of the outflow count.
-        for _ in range(3):
-            multiplier = factor.solve(numbering.gather.T @ outflows.reshape(-1, columns))
+        for _ in range(2):
+            multiplier = factor.solve(numbering.gather.T @ outflows.reshape(-1, columns) - demand)
             outflows = outflows - mobility @ (numbering.gather @ multiplier).reshape(cells, facet, columns)
-        outflows = self._conforming(outflows, sources[:, 0] / self.reference.divergence[0, 0])
+        outflows = self._conforming(outflows, sources[:, 0] / self.reference.divergence[0, 0], wanted)
         remainder = inner @ load[:, facet:] - coupling @ outflows
         return np.concatenate([outflows, remainder, sources[:, 1:]], axis=1)
 
-    def _conforming(self, outflows: Array, totals: Array) -> Array:
-        """Facet coefficients opposite on both sides, zero on the Neumann part, with ``totals`` (nc, m)."""
+    def _conforming(self, outflows: Array, totals: Array, wanted: Array) -> Array:
+        """Facet coefficients that add up on both sides to those ``wanted``, out of each cell to ``totals`` (nc, m)."""
         mesh = self.form.mesh
         cells, _, columns = outflows.shape
         faces = mesh.dimension + 1
@@ -137,11 +142,13 @@ class FluxSpace:
         sign = np.where(first, 1.0, -1.0)[:, :, None, None]
         total = np.zeros((len(mesh.facets), shaped.shape[2], columns))
         np.add.at(total, mesh.cell_facets, sign * shaped)
-        boundary = mesh.facet_cells[:, 1] < 0
-        factor = np.where(boundary, np.where(self.form.dirichlet, 1.0, 0.0), 0.5)
-        mean = total * factor[:, None, None]
-        mean[:, 0] = balance(mesh, self.form.dirichlet, mean[:, 0], totals)
-        return np.asarray((sign * mean[mesh.cell_facets]).reshape(outflows.shape))
+        boundary, held = mesh.facet_cells[:, 1] < 0, self.form.dirichlet
+        # Both sides get half of what is wanted, and the mean of what they pass on to one another.
+        given = np.where(held[:, None, None], 0.0, np.where(boundary, 1.0, 0.5)[:, None, None] * wanted)
+        passed = total * np.where(boundary, np.where(held, 1.0, 0.0), 0.5)[:, None, None]
+        own = np.sum(given[mesh.cell_facets, 0], axis=1)
+        passed[:, 0] = balance(mesh, held, passed[:, 0], totals - own)
+        return np.asarray((sign * passed[mesh.cell_facets] + given[mesh.cell_facets]).reshape(outflows.shape))
 
     def divergence_moments(self, fields: Array) -> tuple[Array, Array]:
         """Moments (nc, q, m) of the divergence times the Jacobian, and a bound of the error of each.

@@ -138,7 +138,7 @@ class Minorant:
         """How the energy of e is spent on each cell."""
         form = self.form
         d = form.mesh.dimension
-        if np.min(np.linalg.eigvalsh(form.diffusion_floor)) <= 0:
+        if not (np.isfinite(form.uncertainty) and np.min(np.linalg.eigvalsh(form.diffusion_floor)) > 0):
             raise TooCoarseError("the diffusion has no positive floor on some cell")
         poincare = poincare_constants(form)
         longest = poincare * POINCARE[d]
@@ -183,34 +183,10 @@ class Minorant:
     def condensed(self, bounded: bool = True) -> tuple[csc_matrix, float] | None:
         """The facet matrix with the cell unknowns eliminated, and a bound of its error (none if not ``bounded``).
 
-        None where a cell's own block is not safely positive definite. For any W, with r = B - A W, the Schur
-        complement is C - B^T W - W^T B + W^T A W - r^T A^-1 r: no error of the inverse enters unnoticed.
+        None where a cell's own block is not safely positive definite.
         """
         local, wrong = self.local(bounded)
-        facets = self.numbering.skeleton.shape[1]
-        outer, mixed, inner = local[:, :facets, :facets], local[:, facets:, :facets], local[:, facets:, facets:]
-        doubt = norms(wrong[:, facets:, facets:])
-        least = np.linalg.eigvalsh(inner)[:, 0] - doubt - gamma(100 * inner.shape[1]) * norms(inner)
-        if not np.all(least > 0):
-            return None
-        weights = np.linalg.solve(inner, mixed)
-        residual = mixed - inner @ weights
-        back = mixed.swapaxes(1, 2) @ weights
-        schur = outer - back - back.swapaxes(1, 2) + weights.swapaxes(1, 2) @ inner @ weights
-        if not bounded:
-            return assemble(schur, self.numbering.skeleton, self.numbering.shared), 0.0
-        # Entry by entry: the errors of the blocks, and the rounding of these products.
-        wrong = wrong + gamma(8 * local.shape[1]) * np.abs(local)
-        far = np.abs(weights)
-        crossed = far.swapaxes(1, 2) @ wrong[:, facets:, :facets]
-        total = norms(wrong[:, :facets, :facets] + crossed + crossed.swapaxes(1, 2))
-        total += norms(far.swapaxes(1, 2) @ wrong[:, facets:, facets:] @ far)
-        missed = norms(np.abs(residual) + wrong[:, facets:, :facets] + wrong[:, facets:, facets:] @ far)
-        total += missed**2 / least
-        schur = (schur + schur.swapaxes(1, 2)) / 2
-        # Every facet belongs to two cells at most; the sum of two numbers rounds once more.
-        allowance = 2 * float(np.max(total)) + 2 * gamma(4) * float(np.max(norms(schur)))
-        return assemble(schur, self.numbering.skeleton, self.numbering.shared), allowance
+        return eliminate_cells(local, wrong, self.numbering, bounded)
 
 
 @dataclass(frozen=True)
@@ -221,6 +197,42 @@ class Shares:
     jump: Array
     young: Array
     facet_young: Array
+
+
+def eliminate_cells(
+    local: Array, wrong: Array, numbering: Numbering, bounded: bool
+) -> tuple[csc_matrix, float] | None:
+    """The matrix of the shared unknowns from local ones (nc, n, n), and a bound of its error in the 2-norm.
+
+    ``wrong`` bounds the error of every local entry. The rows behind the shared ones are the cell's own; None where
+    their block is not safely positive definite. For any W, with r = B - A W, the Schur complement is C - B^T W - W^T B
+    + W^T A W - r^T A^-1 r: no error of the inverse enters unnoticed.
+    """
+    shared = numbering.skeleton.shape[1]
+    outer, mixed, inner = local[:, :shared, :shared], local[:, shared:, :shared], local[:, shared:, shared:]
+    doubt = norms(wrong[:, shared:, shared:])
+    least = np.linalg.eigvalsh(inner)[:, 0] - doubt - gamma(100 * inner.shape[1]) * norms(inner)
+    if not np.all(least > 0):
+        return None
+    weights = np.linalg.solve(inner, mixed)
+    residual = mixed - inner @ weights
+    back = mixed.swapaxes(1, 2) @ weights
+    schur = outer - back - back.swapaxes(1, 2) + weights.swapaxes(1, 2) @ inner @ weights
+    if not bounded:
+        return assemble(schur, numbering.skeleton, numbering.shared), 0.0
+    # Entry by entry: the errors of the blocks, and the rounding of these products.
+    wrong = wrong + gamma(8 * local.shape[1]) * np.abs(local)
+    far = np.abs(weights)
+    crossed = far.swapaxes(1, 2) @ wrong[:, shared:, :shared]
+    total = norms(wrong[:, :shared, :shared] + crossed + crossed.swapaxes(1, 2))
+    total += norms(far.swapaxes(1, 2) @ wrong[:, shared:, shared:] @ far)
+    missed = norms(np.abs(residual) + wrong[:, shared:, :shared] + wrong[:, shared:, shared:] @ far)
+    total += missed**2 / least
+    schur = (schur + schur.swapaxes(1, 2)) / 2
+    # Where several cells meet in an unknown errors add up, and the sum of their numbers rounds again.
+    meeting = int(np.max(np.bincount(numbering.skeleton[numbering.skeleton >= 0].ravel()), initial=1))
+    allowance = meeting * (float(np.max(total)) + gamma(meeting + 2) * float(np.max(norms(schur))))
+    return assemble(schur, numbering.skeleton, numbering.shared), allowance
 
 
 def compose(

@@ -119,6 +119,15 @@ def facet_doubt(norm: Form, error: Array) -> float:
 
 def oscillation(energy: Form, norm: Form) -> float:
     """A number not above the largest ratio of functions that oscillate in a cell: from the means of G there."""
-    root = np.linalg.inv(np.linalg.cholesky(norm.moved(1.0).diffusion[:, 0]))
-    ratios = np.linalg.eigvalsh(root @ energy.moved(-1.0).diffusion[:, 0] @ root.swapaxes(1, 2))
-    return float(np.max(ratios)) * (1 - SLACK)
+    return float(np.max(swings(energy.moved(-1.0), norm.moved(1.0)))) * (1 - SLACK)
+
+
+def smallest_ratio(energy: Form, norm: Form) -> float:
+    """A number not below the smallest ratio of functions that oscillate in a cell."""
+    return up(float(np.min(swings(energy.moved(1.0), norm.moved(-1.0)))) * (1 + SLACK))
+
+
+def swings(energy: Form, norm: Form) -> Array:
+    """(nc, d) ratios of the means of G on cells."""
+    root = np.linalg.inv(np.linalg.cholesky(norm.diffusion[:, 0]))
+    return np.asarray(np.linalg.eigvalsh(root @ energy.diffusion[:, 0] @ root.swapaxes(1, 2)))

@@ -1,5 +1,6 @@
 """What a constant is: a question about forms, and the inequality its answer proves."""
 
+import time
 from collections.abc import Callable, Iterator, Mapping
 from dataclasses import dataclass, replace
 
@@ -81,3 +82,9 @@ def from_ratio(
 def inverse_root(pencil_on: Callable[[Mesh], Pencil], index: int = 1) -> Narrow:
     """C = tau_index^(-1/2)."""
     return from_ratio(pencil_on, index, Enclosure.inverse_root, effort=1.9)
+
+
+def share(deadline: float, part: float) -> float:
+    """The end of a part of the time that is left."""
+    now = time.monotonic()
+    return now + part * (deadline - now)

@@ -25,8 +25,9 @@ from service.bounds.refine import FIRST_SIZE, Budget, Step, enclose
 from service.bounds.ritz import TrialSpace
 from service.bounds.rounding import down, up
 from service.bounds.symbol import symbol_bound
-from service.constants.base import Absent, Constant, MeshAt, Question
+from service.constants.base import Absent, Constant, MeshAt, Question, share
 from service.constants.coercivity import with_parts
+from service.constants.friedrichs import friedrichs_bound
 from service.constants.structure import constant_coefficients, held_all_round, proportion, symmetric
 from service.constants.words import admissible, dirichlet_names, norm_words, operator_unit
 from service.forms.bilinear import Bilinear, bilinear
@@ -90,7 +91,8 @@ class Continuity:
             yield from self.by_energy(mesh_at, inner)
         friedrichs: float | None = None
         if bare:
-            friedrichs = self.friedrichs(mesh_at, replace(budget, width=COARSE, deadline=share(last, 0.3)))
+            inner = replace(budget, width=COARSE, deadline=share(last, 0.3))
+            friedrichs = friedrichs_bound(request, mesh_at, inner)
             if friedrichs is None:
                 return
         fine = mesh
@@ -217,18 +219,8 @@ class Continuity:
         size = float(np.max(rest + error))
         if size == 0.0:
             return total
-        friedrichs = self.friedrichs(mesh_at, replace(budget, width=COARSE))
+        friedrichs = friedrichs_bound(self.request, mesh_at, replace(budget, width=COARSE))
         return None if friedrichs is None else up(total + size * friedrichs**2)
-
-    def friedrichs(self, mesh_at: MeshAt, budget: Budget) -> float | None:
-        """C with |u|_L2 <= C |u|; None if it was not found in time."""
-
-        def pencil(mesh: Mesh) -> Pencil:
-            discrete = Discrete(self.request, mesh)
-            return Pencil(discrete.norm, discrete.mass)
-
-        lower = max((step.enclosure.lower for step in enclose(mesh_at, refine, pencil, 1, budget)), default=-math.inf)
-        return up(1 / math.sqrt(lower)) if lower > 0 else None
 
     def traces(self, mesh_at: MeshAt, skew: bool, budget: Budget) -> float | None:
         """A bound of the facet terms of the form against the norm."""
@@ -253,12 +245,6 @@ class Continuity:
             return least
         lower = max((step.enclosure.lower for step in enclose(mesh_at, refine, pencil, 1, budget)), default=-math.inf)
         return up(1 / lower) if lower > 0 else None
-
-
-def share(deadline: float, part: float) -> float:
-    """The end of a part of the time that is left."""
-    now = time.monotonic()
-    return now + part * (deadline - now)
 
 
 def reflected(pencil: Pencil, above: float) -> Pencil:

@@ -1,10 +1,15 @@
 """Friedrichs' constant: ||u|| <= C ||grad u|| for functions that vanish on the Dirichlet part."""
 
-from service.constants.base import Absent, Constant, Question, inverse_root
+import math
+
+from service.bounds.refine import Budget, enclose
+from service.bounds.rounding import up
+from service.constants.base import Absent, Constant, MeshAt, Question, inverse_root
 from service.constants.words import dirichlet_names
 from service.forms.form import Pencil
 from service.forms.operator import Discrete
 from service.meshing.mesh import Mesh
+from service.meshing.refine import refine
 from service.problem.request import Request
 
 
@@ -29,6 +34,17 @@ def ask(request: Request) -> Question | Absent:
     statement = f"||u|| <= C {gradient} in L2, for every u in H1 that vanishes on {names}"
     unit = f"{request.time_unit}^(1/2)" if weighted else request.length_unit
     return Question(request.domain, inverse_root(pencil), statement, unit)
+
+
+def friedrichs_bound(request: Request, mesh_at: MeshAt, budget: Budget) -> float | None:
+    """C with ||v|| <= C |v| for the problem's norm |v|; None if it was not found in time."""
+
+    def pencil(mesh: Mesh) -> Pencil:
+        discrete = Discrete(request, mesh)
+        return Pencil(discrete.norm, discrete.mass)
+
+    lower = max((step.enclosure.lower for step in enclose(mesh_at, refine, pencil, 1, budget)), default=-math.inf)
+    return up(1 / math.sqrt(lower)) if lower > 0 else None
 
 
 FRIEDRICHS = Constant("friedrichs", "Friedrichs constant", ask)
