@@ -275,7 +275,9 @@ def priced(modes: Array, products: Array, young: Array, absolute: bool) -> Array
     modes : (n, m) of p; products : (m, l, q) tensors. With ``absolute`` a bound of all that enters.
     """
     own = products.shape[2]
-    size, tensors, sign = (np.abs(modes), magnitude(products), -1.0) if absolute else (modes, products, 1.0)
+    size, tensors, sign = (np.abs(modes), magnitude(products), -1.0) if absolute else (modes, products.copy(), 1.0)
+    # Orthonormal polynomials times the constant 1: known exactly, so that small modes cost little beside it.
+    tensors[0] = np.eye(products.shape[1], own)
     full = np.einsum("cm,mlj->clj", size, tensors)
     beyond = full[:, own:]
     price = np.where(young > 0, 1 / np.where(young > 0, young, 1), 0.0)

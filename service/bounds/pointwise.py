@@ -11,15 +11,15 @@ import numpy as np
 from numpy.typing import NDArray
 
 from service.bounds.proof import Prover
-from service.bounds.rounding import up
+from service.bounds.rounding import UNIT, up
 from service.forms.bilinear import Bilinear
 from service.forms.form import Form, Pencil
-from service.forms.modes import control_points
+from service.forms.modes import coefficient_modes, control_points
 
 Array = NDArray[np.float64]
 
-SLACK = 1e-11
-"""Relative allowance for the rounding of control points and of small eigenvalue problems."""
+SLACK = 1e-13
+"""Relative allowance for the rounding of control points and of small well-conditioned eigenvalue problems."""
 
 
 def controls(modes: Array, dimension: int) -> Array:
@@ -30,6 +30,12 @@ def controls(modes: Array, dimension: int) -> Array:
 def widened(modes: Array, width: int) -> Array:
     """Modes (n, m, ...) with zeros appended."""
     return np.pad(modes, [(0, 0), (0, width - modes.shape[1])] + [(0, 0)] * (modes.ndim - 2))
+
+
+def slack(gradient: Array) -> float:
+    """``SLACK``, and what dividing by the square roots of matrices (..., d, d) adds: their condition times the unit."""
+    values = np.linalg.eigvalsh(gradient)
+    return SLACK + 64 * UNIT * float(np.max(values[..., -1] / values[..., 0]))
 
 
 def coupling(form: Bilinear, norm: Form, skew: bool) -> tuple[Array, Array, Array]:
@@ -67,7 +73,7 @@ def strongest(form: Bilinear, norm: Form, skew: bool, friedrichs: float | None =
             flat = 1 / np.linalg.eigvalsh(heavy[:, :, :d, :d])[:, :, 0].min(axis=1)
             low = 1 / heavy[:, :, d, d].min(axis=1)
             size = size + error[:, 0] * flat + error[:, 1] * np.sqrt(flat * low) + error[:, 2] * low
-            return up(float(np.max(size)) * (1 + SLACK))
+            return up(float(np.max(size)) * (1 + slack(heavy[:, :, :d, :d])))
         root = np.linalg.inv(np.linalg.cholesky(heavy[:, :, :d, :d]))
     except np.linalg.LinAlgError:
         return math.inf
@@ -78,7 +84,7 @@ def strongest(form: Bilinear, norm: Form, skew: bool, friedrichs: float | None =
     first = float(np.max(steep + error[:, 0] * flat))
     second = float(np.max(mixed + error[:, 1] * np.sqrt(flat))) * (2 if skew else 1)
     third = float(np.max(plain + error[:, 2]))
-    return up((first + second * friedrichs + third * friedrichs**2) * (1 + SLACK))
+    return up((first + second * friedrichs + third * friedrichs**2) * (1 + slack(heavy[:, :, :d, :d])))
 
 
 def facet_size(form: Bilinear | Form) -> Array:
@@ -118,16 +124,47 @@ def facet_doubt(norm: Form, error: Array) -> float:
 
 
 def oscillation(energy: Form, norm: Form) -> float:
-    """A number not above the largest ratio of functions that oscillate in a cell: from the means of G there."""
-    return float(np.max(swings(energy.moved(-1.0), norm.moved(1.0)))) * (1 - SLACK)
+    """A number not above the largest ratio of functions that oscillate around a point."""
+    ratios, error = swings(energy, norm)
+    return float(np.max(ratios[:, :, -1] - error[:, None]))
 
 
 def smallest_ratio(energy: Form, norm: Form) -> float:
-    """A number not below the smallest ratio of functions that oscillate in a cell."""
-    return up(float(np.min(swings(energy.moved(1.0), norm.moved(-1.0)))) * (1 + SLACK))
+    """A number not below the smallest ratio of functions that oscillate around a point."""
+    ratios, error = swings(energy, norm)
+    return up(float(np.min(ratios[:, :, 0] + error[:, None])))
 
 
-def swings(energy: Form, norm: Form) -> Array:
-    """(nc, d) ratios of the means of G on cells."""
-    root = np.linalg.inv(np.linalg.cholesky(norm.diffusion[:, 0]))
-    return np.asarray(np.linalg.eigvalsh(root @ energy.diffusion[:, 0] @ root.swapaxes(1, 2)))
+def least_ratio(energy: Form, norm: Form) -> float:
+    """The largest t proved to keep G_energy - t G_norm >= 0 everywhere, by control points."""
+    d = energy.mesh.dimension
+    width = max(energy.diffusion.shape[1], norm.diffusion.shape[1])
+    above, below = (controls(widened(form.diffusion, width), d) for form in (energy, norm))
+    try:
+        root = np.linalg.inv(np.linalg.cholesky(below))
+    except np.linalg.LinAlgError:
+        return -math.inf
+    ratios = np.linalg.eigvalsh(root @ above @ root.swapaxes(2, 3))
+    return float(np.min(ratios[:, :, 0] - slack(below) * np.abs(ratios).max(axis=2)))
+
+
+def swings(energy: Form, norm: Form) -> tuple[Array, Array]:
+    """(nc, d + 1, d) ratios of G at the corners of cells, and a bound (nc,) of their error.
+
+    Functions that oscillate faster and faster, ever closer to a point, have these ratios in the limit.
+    """
+    d = energy.mesh.dimension
+    corners = np.hstack([np.zeros((d, 1)), np.eye(d)])
+
+    def there(form: Form) -> Array:
+        values = coefficient_modes(d, form.diffusion.shape[1], corners)
+        return np.asarray(np.einsum("mp,nmab->npab", values, form.diffusion))
+
+    below = there(norm.moved(-1.0))
+    root = np.linalg.inv(np.linalg.cholesky(below))
+    ratios = np.linalg.eigvalsh(root @ there(energy) @ root.swapaxes(2, 3))
+    least = np.linalg.eigvalsh(below)[:, :, 0].min(axis=1)
+    far = np.abs(ratios).max(axis=(1, 2))
+    error = (energy.diffusion_error + 1e-13 * np.linalg.norm(energy.diffusion, axis=(2, 3)).sum(axis=1)) / least
+    lost = norm.diffusion_error + 2 * norm.uncertainty * np.linalg.norm(norm.diffusion, axis=(2, 3)).sum(axis=1)
+    return np.asarray(ratios), np.asarray(error + far * (2.1 * lost / least + slack(below)))

@@ -28,6 +28,7 @@ from service.bounds.separation import (
 from service.elements.reference import MAX_ORDER
 from service.errors import ComputationError
 from service.forms.form import Pencil
+from service.forms.modes import degree_of
 from service.meshing.mesh import Mesh
 
 Array = NDArray[np.float64]
@@ -40,6 +41,9 @@ FIRST_ORDER = 3
 
 LOOK_AHEAD = 24
 """How many eigenvalues beyond the wanted one are searched for a gap before counting alone must do."""
+
+COUNT_SECONDS = 2e-4
+"""Seconds that a search for a counted bound takes for each cell, for the lowest order; more only gives up earlier."""
 
 NEAR = 0.2
 """Least distance of a shift from the first ratio, relative to it."""
@@ -273,7 +277,7 @@ def enclose(
             found = sharpen(pencil, index, cut, order, functions, ratios)
             # Trial functions of low order may be too poor for a cut that is proved: count only to have something.
             counting = not cut.count or not math.isfinite(known.lower)
-            if prospect.shrink is None and counting and not math.isfinite(found.lower):
+            if counting and not math.isfinite(found.lower):
                 found = found.intersect(count_below(cut.pencil, known.intersect(found), index, order, budget))
             known = known.intersect(found)
             widths.append(found.width)
@@ -304,7 +308,14 @@ def enclose(
 
 def count_below(pencil: Pencil, known: Enclosure, index: int, order: int, budget: Budget) -> Enclosure:
     """What counting alone proves, where no gap in the spectrum lets the sharp bounds work."""
-    rank = min(order - 1, 4)
+    # What R of the minorant is good for falls by the degree of the coefficients.
+    degree = degree_of(pencil.mesh.dimension, pencil.energy.diffusion.shape[1])
+    rank = min(order - 1 + degree, 5)
+    seconds = budget.deadline - time.monotonic()
+    while len(pencil.mesh.cells) * COUNT_SECONDS * (rank + 1) ** 2 > seconds:
+        rank -= 1
+        if rank <= degree:
+            return UNKNOWN
     bound = counted_bound(pencil, known.upper, index, rank, budget.width, known.lower, budget.deadline)
     by = f"nonconforming minorant of order {rank}, inertia count"
     return Enclosure(bound, math.inf, lower_by=by)

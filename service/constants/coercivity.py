@@ -7,6 +7,7 @@ from dataclasses import replace
 import numpy as np
 
 from service.bounds.enclosure import Enclosure
+from service.bounds.pointwise import controls, least_ratio, smallest_ratio
 from service.bounds.refine import Budget, Step
 from service.bounds.rounding import down, up
 from service.constants.base import Absent, Constant, MeshAt, Narrow, Question, from_ratio
@@ -51,11 +52,9 @@ def with_parts(pencil: Callable[[Mesh], Pencil], answer: Callable[[Enclosure], E
 
 def by_parts(pencil: Pencil) -> Enclosure:
     """What comparing coefficients point by point proves of tau_1."""
-    below, above = pencil.energy.moved(-1.0), pencil.energy.moved(1.0)
-    norm = pencil.weight
-    upper = float(np.min(smallest(above.diffusion[:, 0], norm.diffusion[:, 0])))
-    lower = float(np.min(smallest(below.diffusion_floor, norm.diffusion[:, 0])))
-    lower = min(lower, *potential_ratio(below, norm))
+    below, norm = pencil.energy.moved(-1.0), pencil.weight
+    upper = smallest_ratio(pencil.energy, norm)
+    lower = min(least_ratio(below, norm.moved(1.0)), *potential_ratio(below, norm))
     return Enclosure(
         down(lower, 64) if math.isfinite(lower) else -math.inf,
         up(upper, 64),
@@ -64,17 +63,11 @@ def by_parts(pencil: Pencil) -> Enclosure:
     )
 
 
-def smallest(first: np.ndarray, second: np.ndarray) -> np.ndarray:
-    """(nc,) smallest eigenvalue of each pencil of 2x2 matrices, the second positive definite."""
-    root = np.linalg.inv(np.linalg.cholesky(second))
-    return np.asarray(np.linalg.eigvalsh(root @ first @ root.swapaxes(1, 2))[:, 0])
-
-
 def potential_ratio(form: Form, norm: Form) -> tuple[float, float]:
     """Largest t that keeps p - t w0 >= 0 everywhere; -inf where that is impossible or facet terms are negative."""
-    least = form.potential[:, 0] - form.potential_swing
+    least = controls(form.potential, form.mesh.dimension).min(axis=1)
     density = norm.potential[:, 0]
-    facets = form.facet[:, 0] - form.facet_swing
+    facets = controls(form.facet, form.mesh.dimension - 1).min(axis=1)
     free = math.inf if np.all(facets[~form.dirichlet] >= 0) else -math.inf
     if np.all(density > 0):
         return float(np.min(least / density)), free

@@ -11,7 +11,7 @@ from numpy.typing import NDArray
 
 from service.bounds.rounding import UNIT, gamma
 from service.elements.scalar import subsimplices
-from service.forms.modes import degree_of, suprema
+from service.forms.modes import control_points, degree_of, suprema
 from service.meshing.mesh import Mesh
 
 Array = NDArray[np.float64]
@@ -76,10 +76,24 @@ class Form:
 
     @cached_property
     def diffusion_floor(self) -> Array:
-        """(nc, d, d) constant matrices with G >= floor on the cell."""
-        d = self.mesh.dimension
-        loss = np.linalg.norm(self.diffusion[:, 1:], axis=(2, 3)) @ suprema(d, self.diffusion.shape[1])[1:]
-        return np.asarray(self.diffusion[:, 0] - loss[:, None, None] * np.eye(d))
+        """(nc, d, d) constant matrices with G >= floor on the cell.
+
+        A share of the mean, the largest for which all control points are above it; where that is not positive definite,
+        the mean less all other modes.
+        """
+        d, modes = self.mesh.dimension, self.diffusion.shape[1]
+        mean = self.diffusion[:, 0]
+        if modes == 1:
+            return np.asarray(mean)
+        loss = np.linalg.norm(self.diffusion[:, 1:], axis=(2, 3)) @ suprema(d, modes)[1:]
+        crude = mean - loss[:, None, None] * np.eye(d)
+        least = np.linalg.eigvalsh(mean)[:, 0]
+        good = least > 1e-9 * np.abs(np.trace(mean, axis1=1, axis2=2))
+        root = np.linalg.inv(np.linalg.cholesky(np.where(good[:, None, None], mean, np.eye(d))))
+        points = np.einsum("cm,nmab->ncab", control_points(d, modes), self.diffusion)
+        ratio = np.linalg.eigvalsh(root[:, None] @ points @ root[:, None].swapaxes(2, 3))
+        share = np.min(ratio[:, :, 0], axis=1) - 1e-11 * np.max(np.abs(ratio), axis=(1, 2))
+        return np.asarray(np.where((good & (share > 0))[:, None, None], share[:, None, None] * mean, crude))
 
     @cached_property
     def potential_swing(self) -> Array:
