@@ -1,30 +1,25 @@
 """A nonconforming minorant of any order of a quadratic form: a matrix with no fewer negative directions.
 
-For u in V keep, on each cell, its L2 projection u_T on polynomials of order k + 1 and, on each facet, the
-projection u_F of its
-trace on order k. They determine l(w) = int G grad u . grad w for every polynomial w of order j = k + 1 - q, where G
-has degree q
-(integrate by parts). Hence, for any R of order j that depends linearly on (u_T, u_F), and e = u - R of zero mean,
+For u in V keep, on each cell, its L2 projection u_T on polynomials of order k + 1 and, on each facet, the projection
+u_F of its trace on order k. They determine l(w) = int G grad u . grad w for every polynomial w of order j = k + 1 - q,
+where G has degree q (integrate by parts). Hence, for any R of order j that depends linearly on (u_T, u_F), and
+e = u - R of zero mean,
 
     int G grad u . grad u = 2 l(R) - int G grad R . grad R + int G grad e . grad e,
-    int G grad e . grad e >= a (|u_T - R|^2 + |u - u_T|^2) / c^2 + b w sum_F mean_F (u_F - P_F R)^2 + sum_F s_F
-    |e|_F^2.
+    int G grad e . grad e >= a (|u_T - R|^2 + |u - u_T|^2) / c^2
+                             + sum_F w_F (mean_F (u_F - P_F R)^2 + mean_F (u - u_F)^2).
 
-c is the Poincare constant of the cell in the metric of the floor of G: h / j_(1,1) on triangles (Laugesen and
-Siudeja,
-J. Differential Equations 249 (2010) 118-135), h / pi on any simplex (Payne and Weinberger 1960; Bebendorf 2003), h
-the longest
-edge. The trace identity gives mean_F f^2 = mean_T (f^2 + (2/d) f (x - P) . grad f) <= (c^2 + 2 h c / d) mean_T
-|grad f|^2 for zero
-mean, hence w and the price of s_F. The terms |u - u_T|^2 and |e|_F^2 >= |u - u_F|_F^2 pay for negative potentials:
+c is the Poincare constant of the cell in the metric of the floor of G: h / j_(1,1) on triangles (Laugesen and Siudeja,
+J. Differential Equations 249 (2010) 118-135), h / pi on any simplex (Payne and Weinberger 1960; Bebendorf 2003), h the
+longest edge. The trace identity gives mean_F f^2 = mean_T (f^2 + (2/d) f (x - P) . grad f) <= (c^2 + 2 h c / d) mean_T
+|grad f|^2 for zero mean, hence w_F. The terms |u - u_T|^2 and (u - u_F)^2, where R has a trace of order k, pay for
+negative potentials:
 
     int p u^2 >= int p u_T^2 - |(1 - P)(p u_T)|^2 / z - (z + p_-) |u - u_T|^2 for any z > 0,
 
-the same on facets. What is left, Q[u] >= N[u_T, u_F], is a form on finitely many unknowns. The map u -> (u_T, u_F)
-is
-injective on subspaces where Q < 0, because N < 0 there: N has at least as many negative directions as Q on V. (The
-idea of
-keeping moments in cells and on facets is that of hybrid high-order methods, Di Pietro and Ern, CMAME 283 (2015)
+the same on facets. What is left, Q[u] >= N[u_T, u_F], is a form on finitely many unknowns. The map u -> (u_T, u_F) is
+injective on subspaces where Q < 0, because N < 0 there: N has at least as many negative directions as Q on V. (The idea
+of keeping moments in cells and on facets is that of hybrid high-order methods, Di Pietro and Ern, CMAME 283 (2015)
 1-21.)
 """
 
@@ -150,12 +145,15 @@ class Minorant:
         facet_hunger = (np.maximum(facet_young - form.facet[:, 0], 0) + facet_young) * form.facet_measure
         facet_hunger = np.where(form.dirichlet, 0.0, facet_hunger)
         cell_need = hunger * poincare**2 * (1 + 1e-9)
-        facet_need = through * np.sum(self._owned * facet_hunger[form.mesh.cell_facets], axis=1) * (1 + 1e-9)
+        needs = through[:, None] * self._owned * facet_hunger[form.mesh.cell_facets] * (1 + 1e-9)
+        facet_need = np.sum(needs, axis=1)
         if np.max(cell_need + facet_need) > LARGEST_NEED:
             raise TooCoarseError("the mesh is too coarse for the negative part of the form")
         share = np.maximum(SHARE * (1 - facet_need), cell_need)
         rest = (1 - facet_need - share) * (1 - 1e-9)
-        return Shares(share * form.jacobian / poincare**2, rest / ((d + 1) * through), young, facet_young)
+        # What is set aside for a facet pays for both parts of e there, u_F - P_F R and u - u_F: they are orthogonal.
+        jump = (needs + rest[:, None] / (d + 1)) / through[:, None]
+        return Shares(share * form.jacobian / poincare**2, jump, young, facet_young)
 
     def _potential(self, shares: "Shares", absolute: bool = False) -> Array:
         """int p u_T^2 - |(1 - P)(p u_T)|^2 / z on each cell (nc, n, n); ``absolute``: a bound of all that enters."""
@@ -191,7 +189,7 @@ class Minorant:
 
 @dataclass(frozen=True)
 class Shares:
-    """What the energy of e pays for: factors (nc,) of |u_T - R|^2 in reference coordinates and of mean-square jumps."""
+    """What the energy of e pays for: factors of |u_T - R|^2 (nc,), in reference coordinates, and of jumps (nc, d+1)."""
 
     cell: Array
     jump: Array
@@ -258,7 +256,8 @@ def compose(
     total += shares.cell[:, None, None] * (missed.swapaxes(1, 2) @ missed)
     jumps = trace @ missed
     jumps[:, :, n:] += np.eye(rows)
-    total += shares.jump[:, None, None] * (jumps.swapaxes(1, 2) @ jumps)
+    weights = np.repeat(shares.jump, rows // shares.jump.shape[1], axis=1)
+    total += jumps.swapaxes(1, 2) @ (weights[:, :, None] * jumps)
     total[:, :n, :n] += potentials[0]
     own, mixed, outer = total[:, :n, :n], total[:, :n, n:], total[:, n:, n:]
     across = trace.T @ outer

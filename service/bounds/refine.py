@@ -2,8 +2,8 @@
 
 import math
 import time
-from collections.abc import Callable, Iterator
-from dataclasses import dataclass, replace
+from collections.abc import Callable, Iterator, Mapping
+from dataclasses import dataclass, field, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -42,7 +42,7 @@ FIRST_ORDER = 3
 LOOK_AHEAD = 24
 """How many eigenvalues beyond the wanted one are searched for a gap before counting alone must do."""
 
-COUNT_SECONDS = 2e-4
+COUNT_SECONDS = 8e-5
 """Seconds that a search for a counted bound takes for each cell, for the lowest order; more only gives up earlier."""
 
 NEAR = 0.2
@@ -60,11 +60,15 @@ MINORANT_CELLS = 6000
 
 @dataclass(frozen=True)
 class Budget:
-    """Bounds of one loop: relative width of tau wanted, a point on the monotonic clock, unknowns."""
+    """Bounds of one loop: relative width of tau wanted, a point on the monotonic clock, unknowns.
+
+    found : what is proved already of other constants of the problem, by their ids.
+    """
 
     width: float
     deadline: float
     unknowns: int
+    found: Mapping[str, Enclosure] = field(default_factory=dict)
 
     def affords(self, seconds: float, unknowns: int) -> bool:
         """Whether a step of so many seconds and unknowns still fits."""
@@ -179,7 +183,8 @@ def look(
         size, gap = gap_above(ritz, index)
     useful = gap >= LEAST_GAP
     goal = float(ritz[size if useful else index - 1])
-    fine = reachable(pencil, pencil_on, refined, goal, cells)
+    # Fine cells just for the count pay where sharp bounds follow on the coarse ones.
+    fine = reachable(pencil, pencil_on, refined, goal, cells if sharp else 0)
     if fine is None:
         return Prospect(ratios, functions, Separation(0, 0.0, 0.0, pencil), shrink_to(pencil, goal))
     if useful and fine is not pencil:

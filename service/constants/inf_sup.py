@@ -59,12 +59,18 @@ class Search:
         """Coercivity first, then certificates on finer and finer meshes."""
         theta = proportion(self.request)
         known = Enclosure(0.0, math.inf, lower_by="nothing is below zero")
-        only = replace(budget, width=max(budget.width, COARSE), deadline=share(budget.deadline, 0.3))
-        for step in with_parts(self.pencil)(mesh_at, budget if theta is None else only):
-            known = known.intersect(self.simple(step))
-            yield replace(step, enclosure=known)
-            if known.width <= budget.width:
-                return
+        before = budget.found.get("coercivity")
+        first = mesh_at(FIRST_SIZE)
+        if before is not None:
+            known = known.intersect(self.simple(before, first))
+            yield Step(known, first, 0, 1, len(first.points), 0.0)
+        else:
+            only = replace(budget, width=max(budget.width, COARSE), deadline=share(budget.deadline, 0.3))
+            for step in with_parts(self.pencil)(mesh_at, budget if theta is None else only):
+                known = known.intersect(self.simple(step.enclosure, step.mesh))
+                yield replace(step, enclosure=known)
+        if known.width <= budget.width:
+            return
         if theta is None:
             return
         friedrichs: float | None = None
@@ -75,12 +81,12 @@ class Search:
                 return
         yield from self.certificates(mesh_at, budget, theta, friedrichs, known)
 
-    def simple(self, step: Step) -> Enclosure:
+    def simple(self, coercivity: Enclosure, mesh: Mesh) -> Enclosure:
         """Coercivity below, oscillation above."""
-        pencil = self.pencil(step.mesh)
+        pencil = self.pencil(mesh)
         swing = smallest_ratio(pencil.energy, pencil.weight)
-        lower = max(step.enclosure.lower, 0.0)
-        by = f"coercivity: {step.enclosure.lower_by}"
+        lower = max(coercivity.lower, 0.0)
+        by = f"coercivity: {coercivity.lower_by}"
         return Enclosure(lower, max(swing, lower), by, "oscillation around a point")
 
     def certificates(

@@ -46,6 +46,7 @@ class Tally:
     history: list[JSON] = field(default_factory=list)
     mesh: JSON = field(default_factory=dict)
     warnings: list[str] = field(default_factory=list)
+    found: dict[str, Enclosure] = field(default_factory=dict)
 
     def asked(self, name: str) -> list[tuple[Path, Question]]:
         """The questions of one constant, each with where its answer goes; constants that do not exist are entered."""
@@ -65,7 +66,7 @@ class Tally:
         else:
             self.constants.setdefault(path[0], {})[path[1]] = value
 
-    def found(self, path: Path) -> JSON | None:
+    def at(self, path: Path) -> JSON | None:
         """What is known of a constant (of a part)."""
         value: JSON | None = self.constants.get(path[0])
         return value if value is None or len(path) == 1 else value.get(path[1])
@@ -159,7 +160,7 @@ def run(inputs: JSON, report: Report) -> JSON:
     for done, (path, question) in enumerate(questions):
         now = time.monotonic()
         deadline = now + (last - now) / (len(questions) - done)
-        budget = Budget(request.tolerance, deadline, request.limits.unknowns)
+        budget = Budget(request.tolerance, deadline, request.limits.unknowns, tally.found)
         cells = max(1000, request.limits.unknowns // CELL_UNKNOWNS)
         mesh_at = partial(_mesh, question, GRADING * budget.width, cells)
         name = " ".join(path)
@@ -168,6 +169,7 @@ def run(inputs: JSON, report: Report) -> JSON:
             if not math.isfinite(value.lower) and not math.isfinite(value.upper):
                 continue
             tally.place(path, describe(request, question, value))
+            tally.found[name] = value
             tally.mesh = mesh_summary(step.mesh)
             tally.history.append(
                 {
@@ -180,7 +182,7 @@ def run(inputs: JSON, report: Report) -> JSON:
             )
             percent = 100 * (done + progress(value.width, request.tolerance)) / len(questions)
             report(min(percent, 99.0), sentence(name, request, question, value, step), tally.document())
-        found = tally.found(path)
+        found = tally.at(path)
         if found is None:
             tally.place(path, {"rigour": "guaranteed", "target_met": False, "statement": question.statement})
         if found is None or not found["target_met"]:
