@@ -52,8 +52,9 @@ def ask(request: Request) -> Question | Absent:
     """C = sup a(u, v) / (||u|| ||v||)."""
     if request.norm.kind != "h1" and not dirichlet_names(request):
         return Absent("Without a Dirichlet part the gradient is no norm: constants have none. Use the norm h1.")
-    statement = f"|a(u,v)| <= C ||u|| ||v|| for {admissible(request).replace('every v', 'all u and v')}; "
-    return Question(request.domain, Continuity(request).narrow, statement + norm_words(request), operator_unit(request))
+    functions = admissible(request).replace("every v", "all u, v").replace("vanishes", "vanish")
+    statement = f"|a(u,v)| <= C ||u|| ||v|| for {functions}; {norm_words(request)}"
+    return Question(request.domain, Continuity(request).narrow, statement, operator_unit(request))
 
 
 @dataclass(frozen=True)

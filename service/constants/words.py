@@ -31,6 +31,12 @@ def operator_unit(request: Request) -> str:
     return {"h1": f"1/{time}", "seminorm": f"{length}^2/{time}", "diffusion": "1"}[request.norm.kind]
 
 
+def inverse_operator_unit(request: Request) -> str:
+    """Unit of ||v||^2 / a(v, v)."""
+    length, time = request.length_unit, request.time_unit
+    return {"h1": time, "seminorm": f"{time}/{length}^2", "diffusion": "1"}[request.norm.kind]
+
+
 def trace_unit(request: Request) -> str:
     """Unit of a constant C with ||v||_boundary <= C ||v||."""
     length, time = request.length_unit, request.time_unit

@@ -23,6 +23,7 @@ from service.problem.operator import Samples
 from service.problem.request import Request, canonical, read_request
 from service.problem.schema import input_descriptions
 from service.processes.base import JSON, Limits, Process, Report
+from service.processes.derived import flow_numbers, margins
 from service.processes.schemas import CONSTANTS_OUTPUT
 
 GRADING = 1e-2
@@ -47,6 +48,7 @@ class Tally:
     mesh: JSON = field(default_factory=dict)
     warnings: list[str] = field(default_factory=list)
     found: dict[str, Enclosure] = field(default_factory=dict)
+    numbers: JSON = field(default_factory=dict)
 
     def asked(self, name: str) -> list[tuple[Path, Question]]:
         """The questions of one constant, each with where its answer goes; constants that do not exist are entered."""
@@ -84,6 +86,7 @@ class Tally:
         return {
             "target_met": bool(values) and all(value.get("target_met", True) for value in values),
             "constants": dict(self.constants),
+            "derived": {**margins(self.request, self.found), **self.numbers},
             "mesh": dict(self.mesh),
             "history": list(self.history),
             "warnings": [*self.request.warnings, *self.warnings],
@@ -157,6 +160,7 @@ def run(inputs: JSON, report: Report) -> JSON:
     tally = Tally(request, begun)
     questions = [pair for name in chosen(request) for pair in tally.asked(name)]
     last = begun + request.limits.seconds
+    mesh: Mesh | None = None
     for done, (path, question) in enumerate(questions):
         now = time.monotonic()
         deadline = now + (last - now) / (len(questions) - done)
@@ -170,7 +174,9 @@ def run(inputs: JSON, report: Report) -> JSON:
                 continue
             tally.place(path, describe(request, question, value))
             tally.found[name] = value
-            tally.mesh = mesh_summary(step.mesh)
+            if step.mesh is not mesh:
+                mesh = step.mesh
+                tally.mesh, tally.numbers = mesh_summary(mesh), flow_numbers(request, mesh)
             tally.history.append(
                 {
                     "unknowns": step.unknowns,

@@ -10,7 +10,7 @@ CONSTANT: JSON = {
     "type": "object",
     "properties": {
         "exists": {"type": "boolean", "description": "False when the problem has no such constant."},
-        "lower": {"type": "number", "description": "Proved lower bound of the constant."},
+        "lower": {**NUMBER_OR_NONE, "description": "Proved lower bound of the constant; null while none is known."},
         "upper": {**NUMBER_OR_NONE, "description": "Proved upper bound; null while none is known."},
         "best": {"type": "number", "description": "The value that is nearest, by experience."},
         "relative_width": {**NUMBER_OR_NONE, "description": "(upper - lower) / upper."},
@@ -25,12 +25,61 @@ CONSTANT: JSON = {
     "required": ["statement"],
 }
 
+NUMBER_WITH_WORDS: JSON = {
+    "type": "object",
+    "required": ["bound", "statement"],
+    "properties": {
+        "bound": {"type": "number"},
+        "unit": {"type": "string"},
+        "by": {"type": "string", "description": "The constants that it follows from."},
+        "statement": {"type": "string"},
+    },
+}
+
+DERIVED: JSON = {
+    "type": "object",
+    "description": "What follows from the constants found; members that do not apply are left out.",
+    "properties": {
+        "stability": NUMBER_WITH_WORDS,
+        "quasi_optimality": NUMBER_WITH_WORDS,
+        "peclet": {
+            "type": "object",
+            "properties": {
+                "domain": {"type": "number"},
+                "mesh": {"type": "number"},
+                "mesh_size_for_unit_mesh_peclet": {"type": "number"},
+                "unit_of_mesh_size": {"type": "string"},
+                "statement": {"type": "string"},
+            },
+        },
+        "damkoehler": {
+            "type": "object",
+            "properties": {
+                "diffusive": {"type": "number"},
+                "advective": {"type": "number"},
+                "statement": {"type": "string"},
+            },
+        },
+    },
+}
+
 RESULT: JSON = {
     "type": "object",
     "required": ["target_met", "constants"],
     "properties": {
         "target_met": {"type": "boolean", "description": "Whether every constant is as narrow as asked."},
-        "constants": {"type": "object", "additionalProperties": CONSTANT},
+        "constants": {
+            "type": "object",
+            "properties": {
+                "trace": {
+                    "type": "object",
+                    "description": "One constant for each boundary part, by its name.",
+                    "additionalProperties": CONSTANT,
+                }
+            },
+            "additionalProperties": CONSTANT,
+        },
+        "derived": DERIVED,
         "mesh": {
             "type": "object",
             "properties": {
