@@ -1,7 +1,6 @@
 """The bilinear form of a problem on a mesh, not symmetric, in the user's units (see ``operator``)."""
 
 from dataclasses import dataclass
-from operator import itemgetter
 
 import numpy as np
 from numpy.typing import NDArray
@@ -9,7 +8,6 @@ from numpy.typing import NDArray
 from service.forms.coefficients import widened
 from service.forms.operator import Discrete
 from service.meshing.mesh import Mesh
-from service.problem.operator import Field
 
 Array = NDArray[np.float64]
 
@@ -46,10 +44,9 @@ def bilinear(discrete: Discrete, skew: bool = False) -> Bilinear:
     """
     unit = discrete.mesh.unit
     matrix, matrix_error = discrete.tensor
-    velocity = discrete.operator.velocity
     flow, flow_error = np.zeros((len(matrix), 1, 2)), np.zeros(len(matrix))
-    if isinstance(velocity, Field):
-        parts = [discrete.on_cells(velocity.components, itemgetter(i)) for i in range(2)]
+    parts = discrete.velocity()
+    if parts:
         width = max(part.modes.shape[1] for part in parts)
         flow = np.stack([widened(part.modes, width) for part in parts], axis=2)
         flow_error = np.hypot(parts[0].error, parts[1].error)

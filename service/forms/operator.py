@@ -21,9 +21,10 @@ from numpy.typing import NDArray
 from service.bounds.rounding import UNIT
 from service.forms.coefficients import Approximation, approximate, user_points, widened
 from service.forms.form import Form, constant_form
+from service.forms.modes import coefficient_modes
 from service.meshing.mesh import Mesh
 from service.problem.expressions.expression import Expression
-from service.problem.operator import Field, Norm, Operator
+from service.problem.operator import Field, Norm, Operator, Samples
 from service.problem.piecewise import Piecewise
 from service.problem.request import Request
 
@@ -116,14 +117,37 @@ class Discrete:
             normals[facet[first]] = outward / np.linalg.norm(outward, axis=1, keepdims=True)
         return normals
 
+    def velocity(self) -> list[Approximation]:
+        """The components of b on all cells; no list without a velocity."""
+        velocity = self.operator.velocity
+        if isinstance(velocity, Field):
+            return [self.on_cells(velocity.components, itemgetter(axis)) for axis in range(2)]
+        return [linear(self.mesh.nodal[self.mesh.cells, axis]) for axis in range(2)] if velocity is not None else []
+
+    def divergence(self) -> Approximation | None:
+        """div b on all cells; None where it vanishes."""
+        velocity = self.operator.velocity
+        if isinstance(velocity, Samples):
+            values = self.mesh.nodal[self.mesh.cells]
+            slopes = values[:, 1:] - values[:, :1]
+            inverse = np.linalg.inv(self._corners[1])
+            total = np.einsum("cia,cia->c", slopes, inverse)
+            # Values at midpoints are rounded means.
+            size = np.abs(values).max(axis=1)
+            return Approximation(total[:, None], 8 * UNIT * np.einsum("ca,cia->c", size, np.abs(inverse)))
+        if not isinstance(velocity, Field) or velocity.solenoidal:
+            return None
+        first = self.on_cells(velocity.components, lambda v: v[0].derivative("x"))
+        return first + self.on_cells(velocity.components, lambda v: v[1].derivative("y"))
+
     def normal_velocity(self, facets: NDArray[np.int64], side: int) -> Approximation:
         """b . n on some facets, b from one side, n out of the first cell."""
-        velocity = self.operator.velocity
-        assert isinstance(velocity, Field)
-        normal = self.normals[facets]
-        return self.on_facets(velocity.components, lambda v: v[0], side, facets).times(normal[:, 0]) + self.on_facets(
-            velocity.components, lambda v: v[1], side, facets
-        ).times(normal[:, 1])
+        velocity, normal = self.operator.velocity, self.normals[facets]
+        if isinstance(velocity, Field):
+            parts = [self.on_facets(velocity.components, itemgetter(axis), side, facets) for axis in range(2)]
+        else:
+            parts = [linear(self.mesh.nodal[self.mesh.facets[facets], axis]) for axis in range(2)]
+        return parts[0].times(normal[:, 0]) + parts[1].times(normal[:, 1])
 
     def facet_terms(self, flow: float, jump: float) -> Approximation:
         """alpha + ``flow`` b . n on the boundary off the Dirichlet part, ``jump`` [b . n] on interfaces, else 0."""
@@ -155,11 +179,8 @@ class Discrete:
     def potential(self, divergence: float) -> Approximation:
         """c + ``divergence`` div b."""
         total = self.on_cells(self.operator.reaction, lambda c: c)
-        velocity = self.operator.velocity
-        if isinstance(velocity, Field) and not velocity.solenoidal and divergence:
-            for part in (lambda v: v[0].derivative("x"), lambda v: v[1].derivative("y")):
-                total = total + self.on_cells(velocity.components, part).times(divergence)
-        return total
+        found = self.divergence() if divergence else None
+        return total if found is None else total + found.times(divergence)
 
     @cached_property
     def skew_share(self) -> float:
@@ -224,6 +245,14 @@ def norm_form(norm: Norm, discrete: Discrete) -> Form:
         return discrete.gradient
     length = norm.length_scale / mesh.unit
     return constant_form(mesh, discrete.dirichlet, diffusion=length * length, potential=1.0)
+
+
+def linear(values: Array) -> Approximation:
+    """Linear functions on simplices from their values (n, k + 1) at the vertices."""
+    k = values.shape[1] - 1
+    corners = np.hstack([np.zeros((k, 1)), np.eye(k)])
+    modes = values @ np.linalg.inv(coefficient_modes(k, k + 1, corners))
+    return Approximation(np.asarray(modes), 32 * UNIT * np.abs(values).max(axis=1))
 
 
 def gathered(count: int, parts: list[tuple[NDArray[np.bool_], Approximation]]) -> Approximation:

@@ -11,6 +11,11 @@ def no_regions() -> NDArray[np.bool_]:
     return np.empty((0, 0), dtype=bool)
 
 
+def no_field() -> NDArray[np.float64]:
+    """No values at vertices."""
+    return np.empty((0, 0))
+
+
 @dataclass(frozen=True)
 class Mesh:
     """Simplices in d dimensions, in normalised coordinates.
@@ -33,6 +38,8 @@ class Mesh:
         origin + unit x. Empty for a mesh that has no user's coordinates.
     regions : (nc, R) whether the cell lies inside each region of the domain, outside otherwise; (nc, 0)
         if not given.
+    nodal : (nv, k) values at the vertices of a field that is linear on every cell and is carried along; (0, 0) if
+        there is none.
     """
 
     points: NDArray[np.float64]
@@ -46,6 +53,7 @@ class Mesh:
     shape_error: float
     origin: tuple[float, ...] = ()
     regions: NDArray[np.bool_] = field(default_factory=no_regions)
+    nodal: NDArray[np.float64] = field(default_factory=no_field)
 
     def __post_init__(self) -> None:
         """Memberships of every cell in no region."""

@@ -8,7 +8,8 @@ from service.meshing.mesh import Mesh
 
 
 def refine(mesh: Mesh) -> Mesh:
-    """Join the midpoints of the edges of every triangle; spans stay exact, parts and regions are inherited.
+    """Join the midpoints of the edges of every triangle; spans stay exact, parts and regions are inherited,
+    and so is the field: at midpoints it is the mean.
 
     Old vertex i is numbered like the pair (i, i), the midpoint of i and j > i like the pair (i, j), in
     lexicographic order. Then the children of (x₀, x₁, x₂), x₀ < x₁ < x₂, are in ascending order as
@@ -29,6 +30,11 @@ def refine(mesh: Mesh) -> Mesh:
     points[vertex] = mesh.points
     points[middle] = mesh.points[mesh.facets].mean(axis=1)
 
+    nodal = np.empty((len(points) if len(mesh.nodal) else 0, mesh.nodal.shape[1]))
+    if len(nodal):
+        nodal[vertex] = mesh.nodal
+        nodal[middle] = mesh.nodal[mesh.facets].mean(axis=1)
+
     facets = build_facets(cells)
     part = np.full(len(facets.vertices), -1, dtype=np.int64)
     outside = np.flatnonzero(mesh.part >= 0)
@@ -47,6 +53,7 @@ def refine(mesh: Mesh) -> Mesh:
         shape_error=mesh.shape_error,
         origin=mesh.origin,
         regions=np.repeat(mesh.regions, 4, axis=0),
+        nodal=nodal,
     )
 
 

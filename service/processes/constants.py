@@ -15,7 +15,8 @@ from service.bounds.enclosure import Enclosure
 from service.bounds.refine import Budget, Step
 from service.constants.base import Absent, Question
 from service.constants.registry import CONSTANTS
-from service.errors import ComputationError, Fault, ProblemError
+from service.errors import ComputationError
+from service.forms.sampled import Carrier
 from service.meshing.generate import mesh_domain
 from service.meshing.mesh import Mesh
 from service.meshing.quality import edge_vectors
@@ -161,12 +162,15 @@ def run(inputs: JSON, report: Report) -> JSON:
     questions = [pair for name in chosen(request) for pair in tally.asked(name)]
     last = begun + request.limits.seconds
     mesh: Mesh | None = None
+    cells = max(1000, request.limits.unknowns // CELL_UNKNOWNS)
+    carrier = Carrier(request, cells) if isinstance(request.operator.velocity, Samples) else None
+    if carrier is not None:
+        tally.warnings += carrier.remarks()
     for done, (path, question) in enumerate(questions):
         now = time.monotonic()
         deadline = now + (last - now) / (len(questions) - done)
         budget = Budget(request.tolerance, deadline, request.limits.unknowns, tally.found)
-        cells = max(1000, request.limits.unknowns // CELL_UNKNOWNS)
-        mesh_at = partial(_mesh, question, GRADING * budget.width, cells)
+        mesh_at = partial(_mesh, question, GRADING * budget.width, cells) if carrier is None else carrier.mesh_at
         name = " ".join(path)
         for step in question.narrow(mesh_at, budget):
             value = step.enclosure
@@ -213,10 +217,6 @@ def chosen(request: Request) -> tuple[str, ...]:
 
 def accept(inputs: JSON) -> JSON:
     """Checks the inputs and fills in defaults."""
-    if isinstance(read_request(inputs, CONSTANTS).operator.velocity, Samples):
-        pointer = "/problem/operator/velocity/samples"
-        detail = "Velocities by samples are not computed with in this version; state expressions or a stream_function."
-        raise ProblemError(Fault(pointer, detail))
     return canonical(inputs, CONSTANTS)
 
 

@@ -51,10 +51,11 @@ def margins(request: Request, found: Mapping[str, Enclosure]) -> JSON:
 
 
 def flow_numbers(request: Request, mesh: Mesh) -> JSON:
-    """Peclet and Damkoehler numbers, bounded from above on the domain; empty for a problem without flow and reaction.
+    """Peclet and Damkoehler numbers, bounded from above on the domain; none without flow and reaction.
 
-    With k the smallest eigenvalue of the symmetric part of K, h a cell's longest edge and L the diagonal of the domain's
-    bounding box: mesh Peclet number |b| h / (2 k), domain Peclet number |b| L / k, Damkoehler numbers |c| L^2 / k and |c| L / |b|.
+    With k the smallest eigenvalue of the symmetric part of K, h a cell's longest edge and L the diagonal of the
+    domain's bounding box: mesh Peclet number |b| h / (2 k), domain Peclet number |b| L / k, Damkoehler numbers
+    |c| L^2 / k and |c| L / |b|.
     """
     form = bilinear(Discrete(request, mesh))
     unit = mesh.unit
