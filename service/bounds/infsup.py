@@ -35,7 +35,7 @@ from service.forms.modes import degree_of
 
 Array = NDArray[np.float64]
 
-CONFORMING = 2
+CONFORMING = 3
 """Order of the functions phi_i."""
 
 
@@ -147,7 +147,7 @@ class InfSup:
     def _numbering(self, minorant: Minorant) -> Numbering:
         """Facet moments first, the phi_i behind them."""
         outer, own = minorant.numbering, self.trial.numbering
-        behind = np.where(own.skeleton >= 0, own.skeleton + outer.shared, -1)
+        behind = np.where(own.every >= 0, own.every + outer.shared, -1)
         return Numbering(np.concatenate([outer.skeleton, behind], axis=1), outer.bubbles)
 
     def seems(self, t: float) -> bool:

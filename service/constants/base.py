@@ -27,12 +27,14 @@ class Question:
     narrow : how its enclosure is found.
     statement : the inequality, with C standing for the constant.
     unit : unit of C in the user's units.
+    advice : what to do where the tolerance was not met.
     """
 
     domain: PlaneDomain
     narrow: Narrow
     statement: str
     unit: str
+    advice: str = "Raise limits.seconds or limits.unknowns for a narrower enclosure."
 
 
 @dataclass(frozen=True)

@@ -54,7 +54,11 @@ def ask(request: Request) -> Question | Absent:
         return Absent("Without a Dirichlet part the gradient is no norm: constants have none. Use the norm h1.")
     functions = admissible(request).replace("every v", "all u, v").replace("vanishes", "vanish")
     statement = f"|a(u,v)| <= C ||u|| ||v|| for {functions}; {norm_words(request)}"
-    return Question(request.domain, Continuity(request).narrow, statement, operator_unit(request))
+    advice = "The upper bounds for operators that are not symmetric are not sharp: more time helps little."
+    unit = operator_unit(request)
+    if symmetric(request):
+        return Question(request.domain, Continuity(request).narrow, statement, unit)
+    return Question(request.domain, Continuity(request).narrow, statement, unit, advice)
 
 
 @dataclass(frozen=True)

@@ -99,8 +99,8 @@ class Carrier:
         unit = f"1/{self.request.time_unit}"
         remarks = [
             f"velocity: {len(self.samples.points)} samples, interpolated linearly on {len(mesh.cells)} triangles. The "
-            f"interpolated field's divergence is at most {largest:.3g} {unit} in size, {mean:.3g} {unit} in the root mean "
-            "square; it enters the forms, and the constants hold for that field."
+            f"interpolated field's divergence is at most {largest:.3g} {unit} in size, {mean:.3g} {unit} in the root "
+            "mean square; it enters the forms, and the constants hold for that field."
         ]
         if outside.any():
             remarks.append(

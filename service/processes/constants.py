@@ -197,8 +197,7 @@ def run(inputs: JSON, report: Report) -> JSON:
             tally.place(path, {"rigour": "guaranteed", "target_met": False, "statement": question.statement})
         if found is None or not found["target_met"]:
             tally.warnings.append(
-                f"{name}: the tolerance was not met within the limits; what is stated is proved all the same. "
-                "Raise limits.seconds or limits.unknowns for a narrower enclosure."
+                f"{name}: the tolerance was not met; what is stated is proved all the same. {question.advice}"
             )
     return tally.document()
 
