@@ -3,19 +3,26 @@
 import math
 from collections.abc import Callable, Iterator
 from dataclasses import replace
+from typing import Any
 
 import numpy as np
 
 from service.bounds.enclosure import Enclosure
 from service.bounds.pointwise import controls, least_ratio, smallest_ratio
+from service.bounds.prospect import first_pairs
 from service.bounds.refine import Budget, Step
+from service.bounds.ritz import TrialSpace
 from service.bounds.rounding import down, up
+from service.bounds.sharpen import ritz_bound
 from service.constants.base import Absent, Constant, MeshAt, Narrow, Question, from_ratio
 from service.constants.words import admissible, dirichlet_names, norm_words, operator_unit
 from service.forms.form import Form, Pencil
 from service.forms.operator import Discrete
 from service.meshing.mesh import Mesh
 from service.problem.request import Request
+
+WITNESS_POINTS = 2000
+"""Vertices up to which a function is given with the result."""
 
 
 def ask(request: Request) -> Question | Absent:
@@ -32,8 +39,12 @@ def ask(request: Request) -> Question | Absent:
         discrete = Discrete(request, mesh)
         return Pencil(discrete.symmetric_part, discrete.norm)
 
+    def narrow(mesh_at: MeshAt, budget: Budget) -> Iterator[Step]:
+        for step in with_parts(pencil)(mesh_at, budget):
+            yield replace(step, more=conclusion(pencil, step))
+
     statement = f"a(v,v) >= C ||v||^2 for {admissible(request)}; {norm_words(request)}"
-    return Question(request.domain, with_parts(pencil), statement, operator_unit(request))
+    return Question(request.domain, narrow, statement, operator_unit(request))
 
 
 def with_parts(pencil: Callable[[Mesh], Pencil], answer: Callable[[Enclosure], Enclosure] = lambda tau: tau) -> Narrow:
@@ -48,6 +59,35 @@ def with_parts(pencil: Callable[[Mesh], Pencil], answer: Callable[[Enclosure], E
                 return
 
     return narrow
+
+
+def conclusion(pencil: Callable[[Mesh], Pencil], step: Step) -> dict[str, Any]:
+    """What the sign says, in words, and a function that shows it where it is negative."""
+    if step.enclosure.lower > 0:
+        return {"conclusion": "a is coercive: the problem is well posed for every load."}
+    if step.enclosure.upper >= 0:
+        return {"conclusion": "Not decided yet whether a is coercive."}
+    text = "a is not coercive: there are v with a(v, v) < 0. inf_sup may still show that the problem is well posed."
+    found = witness(pencil(step.mesh)) if len(step.mesh.points) <= WITNESS_POINTS else None
+    return {"conclusion": text} if found is None else {"conclusion": text, "witness": found}
+
+
+def witness(pencil: Pencil) -> dict[str, Any] | None:
+    """A function, linear on cells, with a proved negative ratio; None where the mesh has none."""
+    space = TrialSpace(pencil, 1)
+    _, functions = first_pairs(space, 1)
+    bound = ritz_bound(pencil, space, functions, 1)
+    if not bound < 0:
+        return None
+    mesh, values = pencil.mesh, np.zeros(len(pencil.mesh.points))
+    values[mesh.cells] = functions[:, :, 0]
+    points = np.asarray(mesh.origin) + mesh.unit * mesh.points
+    return {
+        "points": points.tolist(),
+        "triangles": mesh.cells.tolist(),
+        "values": (values / np.max(np.abs(values))).tolist(),
+        "ratio": float(bound),
+    }
 
 
 def by_parts(pencil: Pencil) -> Enclosure:

@@ -176,7 +176,7 @@ def run(inputs: JSON, report: Report) -> JSON:
             value = step.enclosure
             if not math.isfinite(value.lower) and not math.isfinite(value.upper):
                 continue
-            tally.place(path, describe(request, question, value))
+            tally.place(path, {**describe(request, question, value), **step.more})
             tally.found[name] = value
             if step.mesh is not mesh:
                 mesh = step.mesh

@@ -19,6 +19,17 @@ CONSTANT: JSON = {
         "rounding": {"type": "string", "enum": ["included", "not included"]},
         "unit": {"type": "string"},
         "statement": {"type": "string", "description": "The inequality that is proved; C is the constant."},
+        "conclusion": {"type": "string", "description": "Of coercivity: what its sign says."},
+        "witness": {
+            "type": "object",
+            "description": "Of coercivity below zero: a function, linear on triangles, with a(v, v) < 0 (proved).",
+            "properties": {
+                "points": {"type": "array", "items": {"type": "array", "items": {"type": "number"}}},
+                "triangles": {"type": "array", "items": {"type": "array", "items": {"type": "integer"}}},
+                "values": {"type": "array", "items": {"type": "number"}},
+                "ratio": {"type": "number", "description": "Proved upper bound of a(v, v) / ||v||^2."},
+            },
+        },
         "lower_by": {"type": "string"},
         "upper_by": {"type": "string"},
     },

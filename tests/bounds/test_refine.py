@@ -9,8 +9,9 @@ from numpy.typing import NDArray
 from small_meshes import everywhere, nowhere, square, square_ratios
 
 from service.bounds import refine as loop
-from service.bounds.refine import Budget, enclose, next_order, positive_shift
+from service.bounds.refine import Budget, enclose, next_order
 from service.bounds.ritz import TrialSpace
+from service.bounds.sharpen import positive_shift
 from service.elements.reference import MAX_ORDER
 from service.errors import ComputationError
 from service.forms.form import Pencil, laplace

@@ -3,7 +3,11 @@
 import math
 from typing import Any
 
+import numpy as np
 import pytest
+from skfem import Basis, ElementTriP1, MeshTri
+from skfem.models.poisson import laplace
+from skfem.models.poisson import mass as mass_form
 
 from service.processes.registry import PROCESSES
 
@@ -73,6 +77,22 @@ def test_a_negative_reaction() -> None:
     assert stability["by"] == "inf_sup"
     assert stability["bound"] * constants["inf_sup"]["lower"] == pytest.approx(1)
     assert "quasi_optimality" not in result["derived"]
+
+
+def test_the_function_that_shows_a_negative_coercivity() -> None:
+    """Evaluated with an independent assembly (scikit-fem), the witness has the ratio that is stated, below zero."""
+    found = ask(["coercivity"], HELD, operator={"reaction": -30}, norm={"kind": "seminorm"})["constants"]["coercivity"]
+    assert found["conclusion"].startswith("a is not coercive")
+    told = found["witness"]
+    mesh = MeshTri(np.array(told["points"]).T, np.array(told["triangles"]).T)
+    basis = Basis(mesh, ElementTriP1())
+    values = np.array(told["values"])
+    assert np.all(values[mesh.boundary_nodes()] == 0)
+    energy, mass = values @ laplace.assemble(basis) @ values, values @ mass_form.assemble(basis) @ values
+    assert (energy - 30 * mass) / energy == pytest.approx(told["ratio"], rel=1e-9)
+    assert told["ratio"] < 0
+    assert found["lower"] <= told["ratio"]
+    assert ask(["coercivity"], HELD)["constants"]["coercivity"]["conclusion"].startswith("a is coercive")
 
 
 def test_a_solenoidal_flow_in_the_seminorm() -> None:
