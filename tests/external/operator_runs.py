@@ -17,7 +17,7 @@ Interval = tuple[float, float]
 
 WHOLE: Interval = (-math.inf, math.inf)
 
-ROUNDING = 1e-10
+ROUNDING = 1e-8
 """Relative; how much wider an enclosure may get from one step to the next."""
 
 

@@ -4,7 +4,6 @@ Every value is made twice, as the text of the problem document and as a NumPy fu
 need not read the service's expressions.
 """
 
-import math
 from collections.abc import Callable
 from dataclasses import dataclass
 from typing import Any, Literal
@@ -321,14 +320,3 @@ def case(seed: int) -> Case:
         form="convective" if random.random() < 0.5 else "conservative",
         norm=norm(random, any(part.condition == "dirichlet" for part in pieces)),
     )
-
-
-def contrast(found: Case) -> float:
-    """Largest ratio of the sizes of the diffusion at the centres of regions; infinite where it varies inside them."""
-    sizes = []
-    for _, values in found.diffusion.entries:
-        here = [float(values[0].at(np.array(x), np.array(x))) for x in (0.0, 0.3)]
-        if here[0] != here[1]:
-            return math.inf
-        sizes.append(here[0])
-    return max(sizes) / min(sizes)
