@@ -31,6 +31,7 @@ MISSED = 1e-3
 LARGEST_CONTRAST = 10.0
 """Of the diffusion, up to which solutions count as smooth: singular exponents at corners of regions go to zero."""
 
+
 def inverse_square(found: Interval) -> Interval:
     """The ratio whose inverse root is enclosed."""
     return found[1] ** -2, found[0] ** -2 if found[0] > 0 else math.inf
