@@ -83,7 +83,7 @@ class Prover:
         ground, allowance = self.ground
         reserve = 4 * allowance / ground if ground > 0 else 1.0
         try:
-            # A first guess of what rounding takes, then, if that was too little, what it took.
+            # A first guess of what rounding takes, then what it took.
             for _ in range(2):
                 if reserve > LARGEST_RESERVE:
                     return False
@@ -91,12 +91,13 @@ class Prover:
                 if below is None:
                     return False
                 factors = factorise(below[0])
-                if factors.negative > most:
-                    return False
                 taken = factors.residual + below[1]
-                if taken <= 0.99 * reserve * ground:
+                if factors.negative <= most and taken <= 0.99 * reserve * ground:
                     return True
-                reserve = 1.5 * taken / ground
+                needed = 1.5 * taken / ground
+                if factors.negative > most and needed > 0.5 * reserve:
+                    return False
+                reserve = needed
         except (TooCoarseError, SingularPivotError):
             return False
         return False

@@ -26,6 +26,9 @@ LEAST_GAP = 0.002
 BISECTIONS = 6
 """How often the distance of a counted bound is halved on a logarithmic scale."""
 
+STEPS_BACK = (0.0, 0.3, 1.0, 2.0, 4.0, 6.0, 9.0, 12.0)
+"""Logarithms of the factors by which the distance grows until a proof succeeds."""
+
 
 @dataclass(frozen=True)
 class Separation:
@@ -117,8 +120,8 @@ def counted_bound(
             break
     # What the proof sets aside for rounding may be more than this distance: then step back.
     prover = Prover(pencil, order, value(high))
-    for back in range(8):
-        t = value(min(high + 2.0 * back, 0.0))
+    for back in STEPS_BACK:
+        t = value(min(high + back, 0.0))
         if prover.proves(t, index - 1):
             return t
         if time.monotonic() > deadline:

@@ -28,6 +28,7 @@ class Question:
     statement : the inequality, with C standing for the constant.
     unit : unit of C in the user's units.
     advice : what to do where the tolerance was not met.
+    close : numbers of the boundary parts near which meshes are finer.
     """
 
     domain: PlaneDomain
@@ -35,6 +36,7 @@ class Question:
     statement: str
     unit: str
     advice: str = "Raise limits.seconds or limits.unknowns for a narrower enclosure."
+    close: frozenset[int] = frozenset()
 
 
 @dataclass(frozen=True)

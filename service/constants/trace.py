@@ -25,7 +25,8 @@ def ask_part(request: Request, number: int) -> Question | Absent:
             "No trace constant: without a Dirichlet part the gradient does not bound constants. Use the norm h1."
         )
     statement = f"||v||_L2({part.name}) <= C ||v|| for {admissible(request)}; {norm_words(request)}"
-    return Question(request.domain, inverse_root(partial(pencil, request, number)), statement, trace_unit(request))
+    narrow = inverse_root(partial(pencil, request, number))
+    return Question(request.domain, narrow, statement, trace_unit(request), close=frozenset({number}))
 
 
 def pencil(request: Request, number: int, mesh: Mesh) -> Pencil:

@@ -31,6 +31,7 @@ def mesh_domain(
     target: float,
     max_cells: int = 200_000,
     diffusion: Diffusion | None = None,
+    close: frozenset[int] = frozenset(),
 ) -> Mesh:
     """A conforming triangulation of a connected polygon, graded towards its singular points.
 
@@ -48,6 +49,7 @@ def mesh_domain(
     diffusion : gives a scalar diffusion (n,), positive, in any unit, for memberships (n, R) in the
         regions; decides how singular the solution is where interfaces meet or turn. Equal everywhere
         if None.
+    close : numbers of boundary parts near which elements are smaller (see ``outline``).
 
     Raises
     ------
@@ -63,7 +65,7 @@ def mesh_domain(
             "The domain is not connected",
             f"The domain has {domain.components} pieces. Ask for each piece by itself.",
         )
-    outline = describe(domain, size, diffusion)
+    outline = describe(domain, size, diffusion, close)
     if outline.wanted.min() < _SMALLEST:
         raise meshing_failed("The outline touches itself, or very nearly so.")
     base, layers = _triangulate_within(outline, size, target, max_cells)

@@ -23,6 +23,9 @@ Diffusion = Callable[[NDArray[np.bool_]], NDArray[np.float64]]
 MOST_LAYERS = 24
 """Layers at a vertex of interfaces: they end at 4⁻²⁴ of an element, below what rounding lets any corner go to."""
 
+CLOSER = 4.0
+"""How much smaller elements are at parts that weigh by themselves."""
+
 _SMALLEST_EXPONENT = 0.05
 """Exponents below this ask for more layers than there may be in any case, and for numbers out of range."""
 
@@ -73,7 +76,9 @@ class Outline:
         return limited
 
 
-def describe(domain: PlaneDomain, size: float, diffusion: Diffusion | None) -> Outline:
+def describe(
+    domain: PlaneDomain, size: float, diffusion: Diffusion | None, close: frozenset[int] = frozenset()
+) -> Outline:
     """The outline of a domain.
 
     Parameters
@@ -81,6 +86,7 @@ def describe(domain: PlaneDomain, size: float, diffusion: Diffusion | None) -> O
     domain : the domain.
     size : the largest size, in mesh units.
     diffusion : diffusion in the regions; equal everywhere if None.
+    close : numbers of the boundary parts at whose vertices elements are smaller by ``CLOSER``.
 
     Raises
     ------
@@ -100,6 +106,7 @@ def describe(domain: PlaneDomain, size: float, diffusion: Diffusion | None) -> O
     points = on_hosts(frame.points, domain.hosts)
     dirichlet = np.array([part.condition == "dirichlet" for part in domain.parts])[domain.part]
     wanted = vertex_sizes(points, domain.edges, size, domain.interfaces)
+    wanted[domain.edges[np.isin(domain.part, list(close))]] /= CLOSER
     return Outline(
         frame=frame,
         points=points,
