@@ -148,6 +148,18 @@ class Conforming:
         gradient = self._inside(lambda u, v, w, at: u.grad[0] * v.grad[0] + u.grad[1] * v.grad[1])
         return gradient if kind == "seminorm" else self.case.norm["length_scale"] ** 2 * gradient + self.mass
 
+    @cached_property
+    def oscillation(self) -> float:
+        """Ratios a(u, u) / ||u||^2 of functions that oscillate around a point: the least at the quadrature points."""
+        places = np.asarray(self._basis.global_coordinates())
+        cells = np.arange(places.shape[1])
+        k = np.stack([self._at(self.case.diffusion, i, places, cells) for i in range(4)], axis=-1)
+        matrix = k.reshape(*k.shape[:-1], 2, 2)
+        least = float(np.linalg.eigvalsh((matrix + matrix.swapaxes(-1, -2)) / 2).min())
+        if self.case.norm["kind"] == "diffusion":
+            return 1.0
+        return least / float(self.case.norm.get("length_scale", 1.0)) ** 2
+
     def trace(self, name: str) -> csc_matrix:
         """int u v over one boundary part."""
         part = next(part for part in self.case.parts if part.name == name)
