@@ -86,9 +86,11 @@ def smallest_pairs(
         order = np.argsort(-inverted)[:size]
         values = 1.0 / inverted[order]
         vectors = basis @ coefficients[:, order]
-        if np.all(np.abs(values[:wanted] - before) <= tolerance * np.abs(values[:wanted])):
+        # The mass may see fewer directions than are wanted.
+        found = values[:wanted]
+        if len(found) == len(before) and np.all(np.abs(found - before) <= tolerance * np.abs(found)):
             break
-        before = values[:wanted]
+        before = found
         # One more application of the inverse smooths the restart for free.
         block = applied @ coefficients[:, order]
     return values, vectors

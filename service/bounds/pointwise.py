@@ -99,7 +99,10 @@ def doubt(form: Bilinear, norm: Form, friedrichs: float | None = None) -> float:
     On facets: where |u|^2 - t int e u^2 is proved to have no negative direction, int e |u v| <= |u| |v| / t.
     """
     lower = norm.moved(-1.0)
-    flat = 1 / np.sqrt(np.linalg.eigvalsh(lower.diffusion_floor)[:, 0])
+    least = np.linalg.eigvalsh(lower.diffusion_floor)[:, 0]
+    if not np.all(least > 0):
+        return math.inf
+    flat = 1 / np.sqrt(least)
     floor = lower.potential[:, 0] - lower.potential_swing
     low = np.full(len(flat), friedrichs) if friedrichs is not None else 1 / np.sqrt(floor)
     total = np.max(form.diffusion_error * flat**2)
@@ -131,6 +134,8 @@ def oscillation(energy: Form, norm: Form) -> float:
 
 def smallest_ratio(energy: Form, norm: Form) -> float:
     """A number not below the smallest ratio of functions that oscillate around a point."""
+    if not np.any(norm.diffusion):
+        return math.inf
     ratios, error = swings(energy, norm)
     return up(float(np.min(ratios[:, :, 0] + error[:, None])))
 
@@ -138,6 +143,8 @@ def smallest_ratio(energy: Form, norm: Form) -> float:
 def least_ratio(energy: Form, norm: Form) -> float:
     """The largest t proved to keep G_energy - t G_norm >= 0 everywhere, by control points."""
     d = energy.mesh.dimension
+    if not np.any(norm.diffusion):
+        return math.inf if np.all(np.linalg.eigvalsh(energy.diffusion_floor)[:, 0] >= 0) else -math.inf
     width = max(energy.diffusion.shape[1], norm.diffusion.shape[1])
     above, below = (controls(widened(form.diffusion, width), d) for form in (energy, norm))
     try:
@@ -161,10 +168,14 @@ def swings(energy: Form, norm: Form) -> tuple[Array, Array]:
         return np.asarray(np.einsum("mp,nmab->npab", values, form.diffusion))
 
     below = there(norm.moved(-1.0))
+    # Where the cells are too large for the polynomials to be positive nothing is said.
+    fair = np.all(np.linalg.eigvalsh(below)[:, :, 0] > 0, axis=1)
+    below = np.where(fair[:, None, None, None], below, np.eye(d))
     root = np.linalg.inv(np.linalg.cholesky(below))
     ratios = np.linalg.eigvalsh(root @ there(energy) @ root.swapaxes(2, 3))
     least = np.linalg.eigvalsh(below)[:, :, 0].min(axis=1)
     far = np.abs(ratios).max(axis=(1, 2))
     error = (energy.diffusion_error + 1e-13 * np.linalg.norm(energy.diffusion, axis=(2, 3)).sum(axis=1)) / least
     lost = norm.diffusion_error + 2 * norm.uncertainty * np.linalg.norm(norm.diffusion, axis=(2, 3)).sum(axis=1)
+    error = np.where(fair, error, np.inf)
     return np.asarray(ratios), np.asarray(error + far * (2.1 * lost / least + slack(below)))

@@ -106,11 +106,7 @@ def look(
 
 def first_pairs(space: TrialSpace, wanted: int) -> tuple[Array, Array]:
     """Rough smallest ratios, with a shift found by trial that makes the operator positive definite."""
-    energy, weight = space.pencil.energy, space.pencil.weight
-    stiff, density = np.linalg.norm(energy.diffusion[:, 0]), np.linalg.norm(weight.potential[:, 0])
-    other = np.linalg.norm(weight.diffusion[:, 0])
-    # Where B is no more than a boundary form, A is a norm and needs no shift.
-    shift = float(stiff / (density or other)) if density or other else 0.0
+    shift = shift_of(space)
     while True:
         try:
             return space.smallest(shift, wanted, 1e-4, rounds=4)
@@ -120,14 +116,25 @@ def first_pairs(space: TrialSpace, wanted: int) -> tuple[Array, Array]:
             shift *= 8
 
 
+def shift_of(space: TrialSpace) -> float:
+    """A shift of the size of the stiffest functions' ratios; none where B is a boundary form, for A is a norm then."""
+    energy, weight = space.pencil.energy, space.pencil.weight
+    stiff, density = np.linalg.norm(energy.diffusion[:, 0]), np.linalg.norm(weight.potential[:, 0])
+    other = np.linalg.norm(weight.diffusion[:, 0])
+    return float(stiff / (density or other)) if density or other else 0.0
+
+
 def next_pairs(space: TrialSpace, before: Array, wanted: int, tolerance: float, start: Array) -> tuple[Array, Array]:
     """The same ratios again, in a richer space or to more digits: iterated near the first one, where the spectrum is
     spread widest, if that leaves the operator positive definite."""
-    first, last = float(before[0]), float(before[wanted - 1])
-    try:
-        return space.smallest(max(last - first, NEAR * abs(first)) - first, wanted, tolerance, start)
-    except NotPositiveError:
-        return space.smallest(max(abs(last), -2 * first), wanted, tolerance, start)
+    first, last = float(before[0]), float(before[min(wanted, len(before)) - 1])
+    for shift in (max(last - first, NEAR * abs(first)) - first, max(abs(last), -2 * first)):
+        try:
+            return space.smallest(shift, wanted, tolerance, start)
+        except NotPositiveError:
+            continue
+    # Where the first ratio is zero, say.
+    return space.smallest(shift_of(space), wanted, tolerance, start)
 
 
 def shrink_to(pencil: Pencil, goal: float) -> float:

@@ -8,6 +8,7 @@ from service.bounds.enclosure import Enclosure
 from service.bounds.refine import Budget, Step, enclose
 from service.forms.form import Pencil
 from service.meshing.mesh import Mesh
+from service.meshing.outline import Diffusion
 from service.meshing.refine import refine
 from service.problem.domain import PlaneDomain
 from service.problem.request import Request
@@ -29,6 +30,7 @@ class Question:
     unit : unit of C in the user's units.
     advice : what to do where the tolerance was not met.
     close : numbers of the boundary parts near which meshes are finer.
+    materials : how well regions conduct, where that matters for singularities (see ``mesh_domain``).
     """
 
     domain: PlaneDomain
@@ -37,6 +39,7 @@ class Question:
     unit: str
     advice: str = "Raise limits.seconds or limits.unknowns for a narrower enclosure."
     close: frozenset[int] = frozenset()
+    materials: Diffusion | None = None
 
 
 @dataclass(frozen=True)

@@ -7,7 +7,7 @@ from typing import Any
 
 import numpy as np
 
-from service.bounds.enclosure import Enclosure
+from service.bounds.enclosure import UNKNOWN, Enclosure
 from service.bounds.pointwise import controls, least_ratio, smallest_ratio
 from service.bounds.prospect import first_pairs
 from service.bounds.refine import Budget, Step
@@ -15,6 +15,7 @@ from service.bounds.ritz import TrialSpace
 from service.bounds.rounding import down, up
 from service.bounds.sharpen import ritz_bound
 from service.constants.base import Absent, Constant, MeshAt, Narrow, Question, from_ratio
+from service.constants.structure import typical_diffusion
 from service.constants.words import admissible, dirichlet_names, norm_words, operator_unit
 from service.forms.form import Form, Pencil
 from service.forms.operator import Discrete
@@ -44,16 +45,19 @@ def ask(request: Request) -> Question | Absent:
             yield replace(step, more=conclusion(pencil, step))
 
     statement = f"a(v,v) >= C ||v||^2 for {admissible(request)}; {norm_words(request)}"
-    return Question(request.domain, narrow, statement, operator_unit(request))
+    return Question(
+        request.domain, narrow, statement, operator_unit(request), materials=typical_diffusion(request)
+    )
 
 
 def with_parts(pencil: Callable[[Mesh], Pencil], answer: Callable[[Enclosure], Enclosure] = lambda tau: tau) -> Narrow:
-    """The first ratio of a pencil of an operator against a norm, or a function of it."""
+    """The first ratio of a pencil of an operator against a norm or a mass, or a function of it."""
 
     def narrow(mesh_at: MeshAt, budget: Budget) -> Iterator[Step]:
+        known = UNKNOWN
         for step in from_ratio(pencil)(mesh_at, budget):
-            sides = by_parts(pencil(step.mesh))
-            better = replace(step, enclosure=answer(step.enclosure.intersect(sides)))
+            known = known.intersect(step.enclosure).intersect(by_parts(pencil(step.mesh)))
+            better = replace(step, enclosure=answer(known))
             yield better
             if better.enclosure.width <= budget.width:
                 return

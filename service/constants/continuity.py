@@ -28,7 +28,7 @@ from service.bounds.symbol import symbol_bound
 from service.constants.base import Absent, Constant, MeshAt, Question, share
 from service.constants.coercivity import with_parts
 from service.constants.friedrichs import friedrichs_bound
-from service.constants.structure import constant_coefficients, held_all_round, proportion, symmetric
+from service.constants.structure import constant_coefficients, held_all_round, proportion, symmetric, typical_diffusion
 from service.constants.words import admissible, dirichlet_names, norm_words, operator_unit
 from service.forms.bilinear import Bilinear, bilinear
 from service.forms.form import Form, Pencil, constant_form
@@ -57,8 +57,9 @@ def ask(request: Request) -> Question | Absent:
     advice = "The upper bounds for operators that are not symmetric are not sharp: more time helps little."
     unit = operator_unit(request)
     if symmetric(request):
-        return Question(request.domain, Continuity(request).narrow, statement, unit)
-    return Question(request.domain, Continuity(request).narrow, statement, unit, advice)
+        advice = Question.advice
+    materials = typical_diffusion(request)
+    return Question(request.domain, Continuity(request).narrow, statement, unit, advice, materials=materials)
 
 
 @dataclass(frozen=True)
@@ -70,10 +71,18 @@ class Continuity:
     def narrow(self, mesh_at: MeshAt, budget: Budget) -> Iterator[Step]:
         """Cheap bounds first, then the one that fits the problem, then traces where they are needed."""
         begun = time.monotonic()
-        mesh = mesh_at(FIRST_SIZE)
+        mesh, size = mesh_at(FIRST_SIZE), FIRST_SIZE
+        # On large cells the polynomials that stand for K may not be positive.
+        while not np.all(np.linalg.eigvalsh(Discrete(self.request, mesh).norm.moved(-1.0).diffusion_floor) > 0):
+            size /= 2
+            mesh = mesh_at(size)
+
+        def fine(asked: float) -> Mesh:
+            return mesh_at(min(asked, size))
+
         known = UNKNOWN
         last: Step | None = None
-        for found, level, order in self.bounds(mesh, mesh_at, budget):
+        for found, level, order in self.bounds(mesh, fine, budget):
             known = known.intersect(found)
             last = Step(known, mesh, level, order, 3 * len(mesh.points), time.monotonic() - begun)
             yield last

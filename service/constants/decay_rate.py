@@ -1,6 +1,8 @@
 """Energy decay rate: solutions of the homogeneous time-dependent problem decay at least like exp(-C t)."""
 
-from service.constants.base import Constant, Question, from_ratio
+from service.constants.base import Constant, Question
+from service.constants.coercivity import with_parts
+from service.constants.structure import typical_diffusion
 from service.constants.words import admissible
 from service.forms.form import Pencil
 from service.forms.operator import Discrete
@@ -16,7 +18,8 @@ def ask(request: Request) -> Question:
         return Pencil(discrete.symmetric_part, discrete.mass)
 
     statement = f"a(v,v) >= C |v|^2 in L2 for {admissible(request)}: without load, |u(t)| <= exp(-C t) |u(0)|"
-    return Question(request.domain, from_ratio(pencil), statement, f"1/{request.time_unit}")
+    unit, materials = f"1/{request.time_unit}", typical_diffusion(request)
+    return Question(request.domain, with_parts(pencil), statement, unit, materials=materials)
 
 
 DECAY_RATE = Constant("decay_rate", "Energy decay rate", ask)

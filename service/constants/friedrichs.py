@@ -5,6 +5,7 @@ import math
 from service.bounds.refine import Budget, enclose
 from service.bounds.rounding import up
 from service.constants.base import Absent, Constant, MeshAt, Question, inverse_root
+from service.constants.structure import typical_diffusion
 from service.constants.words import dirichlet_names
 from service.forms.form import Pencil
 from service.forms.operator import Discrete
@@ -33,7 +34,8 @@ def ask(request: Request) -> Question | Absent:
     gradient = "||K^(1/2) grad u||" if weighted else "||grad u||"
     statement = f"||u|| <= C {gradient} in L2, for every u in H1 that vanishes on {names}"
     unit = f"{request.time_unit}^(1/2)" if weighted else request.length_unit
-    return Question(request.domain, inverse_root(pencil), statement, unit)
+    materials = typical_diffusion(request) if weighted else None
+    return Question(request.domain, inverse_root(pencil), statement, unit, materials=materials)
 
 
 def friedrichs_bound(request: Request, mesh_at: MeshAt, budget: Budget) -> float | None:

@@ -14,7 +14,7 @@ from service.bounds.rounding import down
 from service.constants.base import Absent, Constant, MeshAt, Question, share
 from service.constants.coercivity import with_parts
 from service.constants.friedrichs import friedrichs_bound
-from service.constants.structure import proportion
+from service.constants.structure import proportion, typical_diffusion
 from service.constants.words import admissible, dirichlet_names, norm_words, operator_unit
 from service.elements.reference import MAX_ORDER
 from service.errors import ComputationError
@@ -47,7 +47,8 @@ def ask(request: Request) -> Question | Absent:
             "Coercivity is the lower bound, for K is no multiple of the gradient's weight in the norm. It is one in "
             "the norm diffusion, or where K is the same number everywhere."
         )
-    return Question(request.domain, Search(request).narrow, statement, operator_unit(request), advice)
+    unit, materials = operator_unit(request), typical_diffusion(request)
+    return Question(request.domain, Search(request).narrow, statement, unit, advice, materials=materials)
 
 
 @dataclass(frozen=True)
@@ -109,7 +110,11 @@ class Search:
             discrete = Discrete(self.request, mesh)
             form, norm = bilinear(discrete), discrete.norm
             # K is theta G up to the rounding of theta.
-            case = InfSup(discrete.symmetric_part, norm, form, theta, doubt(form, norm, friedrichs) + 4 * SLACK * theta)
+            error = doubt(form, norm, friedrichs) + 4 * SLACK * theta
+            if not error < 0.5 * theta:
+                size, level = size / 2, level + 1
+                continue
+            case = InfSup(discrete.symmetric_part, norm, form, theta, error)
             order = min(4 + 2 * level, MAX_ORDER - case.degree)
             unknowns = case.trial.numbering.size + len(mesh.facets) * (case.order + 1)
             # The response converges faster than the certificate: while it would hardly move it is left alone.

@@ -3,6 +3,7 @@
 from dataclasses import replace
 
 from service.constants.base import Constant, Question, inverse_root
+from service.constants.structure import typical_diffusion
 from service.forms.form import Pencil
 from service.forms.operator import Discrete
 from service.meshing.mesh import Mesh
@@ -26,7 +27,8 @@ def ask(request: Request) -> Question:
     gradient = "||K^(1/2) grad u||" if weighted else "||grad u||"
     statement = f"||u|| <= C {gradient} in L2, for every u in H1 whose mean is zero, whatever its boundary values"
     unit = f"{request.time_unit}^(1/2)" if weighted else request.length_unit
-    return Question(loose.domain, inverse_root(pencil, 2), statement, unit)
+    materials = typical_diffusion(loose) if weighted else None
+    return Question(loose.domain, inverse_root(pencil, 2), statement, unit, materials=materials)
 
 
 POINCARE = Constant("poincare", "Poincaré constant", ask)

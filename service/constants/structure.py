@@ -1,5 +1,12 @@
 """What the coefficients of a problem are like, read from the expressions themselves."""
 
+from collections.abc import Callable
+
+import numpy as np
+from numpy.typing import NDArray
+
+from service.problem.expressions.expression import Expression
+from service.problem.expressions.readings import values
 from service.problem.operator import Field
 from service.problem.request import Request
 
@@ -46,3 +53,28 @@ def constant_coefficients(request: Request) -> bool:
 def held_all_round(request: Request) -> bool:
     """Whether functions vanish on the whole boundary."""
     return all(part.condition == "dirichlet" for part in request.domain.parts)
+
+
+def typical_diffusion(request: Request) -> Callable[[NDArray[np.bool_]], NDArray[np.float64]] | None:
+    """How well each region conducts, roughly: for meshes only. None where K is stated once for all places.
+
+    The root of the determinant of sym K at the middle of the domain, by memberships (n, R) in the regions.
+    """
+    diffusion = request.operator.diffusion
+    if diffusion.uniform:
+        return None
+    middle = request.domain.points.mean(axis=0)
+
+    def at(expression: Expression) -> float:
+        return float(values(expression, middle[:, None])[0])
+
+    sizes = []
+    for k11, k12, k21, k22 in diffusion.values:
+        size = at(k11) * at(k22) - ((at(k12) + at(k21)) / 2) ** 2
+        sizes.append(np.sqrt(size) if np.isfinite(size) and size > 0 else 1.0)
+    names = [region.name for region in request.domain.regions]
+
+    def typical(inside: NDArray[np.bool_]) -> NDArray[np.float64]:
+        return np.asarray(np.array(sizes)[diffusion.indices(names, inside)])
+
+    return typical

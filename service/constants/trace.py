@@ -3,6 +3,7 @@
 from functools import partial
 
 from service.constants.base import Absent, Constant, Question, inverse_root
+from service.constants.structure import typical_diffusion
 from service.constants.words import admissible, dirichlet_names, norm_words, trace_unit
 from service.forms.form import Pencil
 from service.forms.operator import Discrete
@@ -26,7 +27,9 @@ def ask_part(request: Request, number: int) -> Question | Absent:
         )
     statement = f"||v||_L2({part.name}) <= C ||v|| for {admissible(request)}; {norm_words(request)}"
     narrow = inverse_root(partial(pencil, request, number))
-    return Question(request.domain, narrow, statement, trace_unit(request), close=frozenset({number}))
+    unit, close = trace_unit(request), frozenset({number})
+    materials = typical_diffusion(request) if request.norm.kind == "diffusion" else None
+    return Question(request.domain, narrow, statement, unit, close=close, materials=materials)
 
 
 def pencil(request: Request, number: int, mesh: Mesh) -> Pencil:

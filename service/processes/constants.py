@@ -203,7 +203,14 @@ def run(inputs: JSON, report: Report) -> JSON:
 
 
 def _mesh(question: Question, target: float, cells: int, size: float) -> Mesh:
-    return mesh_domain(question.domain, size=size, target=target, max_cells=cells, close=question.close)
+    return mesh_domain(
+        question.domain,
+        size=size,
+        target=target,
+        max_cells=cells,
+        diffusion=question.materials,
+        close=question.close,
+    )
 
 
 def chosen(request: Request) -> tuple[str, ...]:

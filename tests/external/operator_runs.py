@@ -17,12 +17,8 @@ Interval = tuple[float, float]
 
 WHOLE: Interval = (-math.inf, math.inf)
 
-ROUNDING = 1e-8
-"""Relative; how much wider an enclosure may get from one step to the next."""
-
-
 def ask_problem(problem: JSON, constants: Sequence[str], tolerance: float, seconds: float) -> Answer:
-    """One run on a whole problem; what it says on the way is checked to be nested, up to rounding."""
+    """One run on a whole problem; what it says on the way is checked to be nested."""
     inputs = {
         "problem": problem,
         "constants": list(constants),
@@ -34,8 +30,8 @@ def ask_problem(problem: JSON, constants: Sequence[str], tolerance: float, secon
     def listen(percent: float, message: str, so_far: JSON) -> None:
         for key, (lower, upper) in intervals(so_far).items():
             before = known.get(key, WHOLE)
-            assert lower >= before[0] - ROUNDING * abs(before[0]), (key, before, (lower, upper))
-            assert upper <= before[1] + ROUNDING * abs(before[1]), (key, before, (lower, upper))
+            assert before[0] <= lower, (key, before, (lower, upper))
+            assert upper <= before[1], (key, before, (lower, upper))
             known[key] = lower, upper
 
     process = PROCESSES["constants"]
