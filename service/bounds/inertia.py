@@ -87,6 +87,9 @@ def smallest_eigenvalue_bound(matrix: csc_matrix) -> float:
     for _ in range(6):
         vector = first.solve(vector / np.linalg.norm(vector))
         norm = float(np.linalg.norm(vector))
-    guess = 0.5 / norm
-    second = factorise(csc_matrix(matrix - guess * identity(matrix.shape[0], format="csc")))
-    return max(0.0, guess - second.residual) if second.negative == 0 else 0.0
+    # Where eigenvalues crowd the iteration has not found the smallest one.
+    for guess in (0.5 / norm, 0.1 / norm, 0.01 / norm):
+        second = factorise(csc_matrix(matrix - guess * identity(matrix.shape[0], format="csc")))
+        if second.negative == 0:
+            return max(0.0, guess - second.residual)
+    return 0.0

@@ -48,7 +48,10 @@ SHARE = 0.5
 """The least part of the error's energy, after facets are paid for, that is spent on the cell terms."""
 
 LARGEST_NEED = 0.85
-"""The largest part of the error's energy that negative potentials may take."""
+"""The largest part of the error's energy that negative potentials and facet terms may take."""
+
+LARGEST_CELL_NEED = 0.45
+"""The largest part that negative potentials may take: beyond, a cell's own block is hardly ever positive definite."""
 
 
 class TooCoarseError(ArithmeticError):
@@ -147,7 +150,7 @@ class Minorant:
         cell_need = hunger * poincare**2 * (1 + 1e-9)
         needs = through[:, None] * self._owned * facet_hunger[form.mesh.cell_facets] * (1 + 1e-9)
         facet_need = np.sum(needs, axis=1)
-        if np.max(cell_need + facet_need) > LARGEST_NEED:
+        if np.max(cell_need + facet_need) > LARGEST_NEED or np.max(cell_need) > LARGEST_CELL_NEED:
             raise TooCoarseError("the mesh is too coarse for the negative part of the form")
         share = np.maximum(SHARE * (1 - facet_need), cell_need)
         rest = (1 - facet_need - share) * (1 - 1e-9)

@@ -6,6 +6,8 @@ from collections.abc import Callable, Iterator, Mapping
 from dataclasses import dataclass, field
 from typing import Any
 
+import numpy as np
+
 from service.bounds.enclosure import UNKNOWN, Enclosure
 from service.bounds.proof import reaches
 from service.bounds.prospect import first_pairs, look, next_pairs
@@ -101,6 +103,8 @@ def enclose(
     known = UNKNOWN
     size = FIRST_SIZE
     level = 0
+    # Seconds for each cell that the first step took on the mesh before.
+    pace = 0.0
     while True:
         begun = time.monotonic()
         try:
@@ -108,6 +112,8 @@ def enclose(
         except ComputationError:
             if known is UNKNOWN:
                 raise
+            return
+        if not budget.affords(pace * len(mesh.cells), 0):
             return
         pencil = pencil_on(mesh)
         if len(mesh.cells) > GLANCE_CELLS:
@@ -134,6 +140,8 @@ def enclose(
             yield Step(known, mesh, level, order, unknowns, cost)
             if known.width <= budget.width:
                 return
+            if order == FIRST_ORDER:
+                pace = cost / len(mesh.cells)
             following = None if prospect.shrink is not None else next_order(order, widths, budget.width)
             if following is None:
                 break
@@ -148,10 +156,16 @@ def enclose(
             ratios, functions = next_pairs(space, ratios, used, tolerance, start)
             order = following
         level += 1
-        shrink = 0.5 if prospect.shrink is None else min(0.5, prospect.shrink)
+        # No leaps: what coarser meshes prove on the way costs little beside the last one.
+        shrink = 0.5 if prospect.shrink is None else min(0.5, max(prospect.shrink, 0.25))
         size *= shrink
-        if not budget.affords(cost, int(unknowns / shrink)):
+        if not budget.affords(pace * (len(mesh.cells) + equilaterals(mesh, size)), int(unknowns / shrink)):
             return
+
+
+def equilaterals(mesh: Mesh, size: float) -> float:
+    """How many equilateral triangles of a size the mesh's area takes; about what a mesh of that size has at least."""
+    return float(np.sum(np.abs(np.linalg.det(mesh.spans)))) / 2 / (math.sqrt(3) / 4 * size**2)
 
 
 def count_below(pencil: Pencil, known: Enclosure, index: int, order: int, budget: Budget) -> Enclosure:
