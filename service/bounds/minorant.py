@@ -50,9 +50,6 @@ SHARE = 0.5
 LARGEST_NEED = 0.85
 """The largest part of the error's energy that negative potentials and facet terms may take."""
 
-LARGEST_CELL_NEED = 0.45
-"""The largest part that negative potentials may take: beyond, a cell's own block is hardly ever positive definite."""
-
 
 class TooCoarseError(ArithmeticError):
     """The cells are too large for the form's negative potentials."""
@@ -150,13 +147,13 @@ class Minorant:
         cell_need = hunger * poincare**2 * (1 + 1e-9)
         needs = through[:, None] * self._owned * facet_hunger[form.mesh.cell_facets] * (1 + 1e-9)
         facet_need = np.sum(needs, axis=1)
-        if np.max(cell_need + facet_need) > LARGEST_NEED or np.max(cell_need) > LARGEST_CELL_NEED:
+        if np.max(cell_need + facet_need) > LARGEST_NEED:
             raise TooCoarseError("the mesh is too coarse for the negative part of the form")
         share = np.maximum(SHARE * (1 - facet_need), cell_need)
         rest = (1 - facet_need - share) * (1 - 1e-9)
         # What is set aside for a facet pays for both parts of e there, u_F - P_F R and u - u_F: they are orthogonal.
         jump = (needs + rest[:, None] / (d + 1)) / through[:, None]
-        return Shares(share * form.jacobian / poincare**2, jump, young, facet_young)
+        return Shares(share * form.jacobian / poincare**2, jump, young, facet_young, float(np.max(cell_need)))
 
     def _potential(self, shares: "Shares", absolute: bool = False) -> Array:
         """int p u_T^2 - |(1 - P)(p u_T)|^2 / z on each cell (nc, n, n); ``absolute``: a bound of all that enters."""
@@ -192,12 +189,16 @@ class Minorant:
 
 @dataclass(frozen=True)
 class Shares:
-    """What the energy of e pays for: factors of |u_T - R|^2 (nc,), in reference coordinates, and of jumps (nc, d+1)."""
+    """What the energy of e pays for: factors of |u_T - R|^2 (nc,), in reference coordinates, and of jumps (nc, d+1).
+
+    need : the largest part that negative potentials take on a cell.
+    """
 
     cell: Array
     jump: Array
     young: Array
     facet_young: Array
+    need: float
 
 
 def eliminate_cells(

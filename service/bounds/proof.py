@@ -9,17 +9,19 @@ from service.bounds.inertia import SingularPivotError, factorise, negatives, sma
 from service.bounds.minorant import Minorant, TooCoarseError
 from service.forms.form import Form, Pencil
 
+LARGEST_NEED = 0.45
+"""What negative potentials may take of the error's energy: beyond, cells' own blocks are hardly positive definite."""
+
 LARGEST_RESERVE = 0.3
 """The largest share of a positive form that may be set aside to pay for rounding."""
 
 
 def reaches(form: Form) -> bool:
-    """Whether the cells are small enough for a minorant of the form."""
+    """Whether the cells are small enough for a minorant of the form that is good for something."""
     try:
-        Minorant(form, 1).shares()
+        return Minorant(form, 1).shares().need <= LARGEST_NEED
     except TooCoarseError:
         return False
-    return True
 
 
 def count(form: Form, order: int) -> int | None:

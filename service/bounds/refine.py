@@ -127,6 +127,7 @@ def enclose(
         prospect = look(pencil, pencil_on, refined, space, index, max(MINORANT_CELLS, 2 * len(mesh.cells)))
         cut, ratios, functions = prospect.cut, prospect.ratios, prospect.functions
         widths: list[float] = []
+        looked = time.monotonic()
         while True:
             found = sharpen(pencil, index, cut, order, functions, ratios)
             # Trial functions of low order may be too poor for a cut that is proved: count only to have something.
@@ -146,9 +147,11 @@ def enclose(
             if following is None:
                 break
             growth = (following / order) ** 3
-            if not budget.affords(cost * growth, int(unknowns * growth)):
+            # The first step's look at the spectrum is not taken again: its functions are where the next ones start.
+            ahead = min(cost, 2 * (time.monotonic() - looked)) * growth
+            if not budget.affords(ahead, int(unknowns * growth)):
                 return
-            begun = time.monotonic()
+            begun = looked = time.monotonic()
             used = max(cut.count, index)
             space = TrialSpace(pencil, following)
             start = space.extend(functions[:, :, : used + 2], order)
