@@ -1,3 +1,3 @@
 """Wellposed: guaranteed enclosures of the constants on which well-posedness rests, over HTTP."""
 
-__version__ = "0.1.0"
+__version__ = "0.2.0"
