@@ -103,7 +103,7 @@ def enclose(
     known = UNKNOWN
     size = FIRST_SIZE
     level = 0
-    # Seconds for each cell that the first step took on the mesh before.
+    # Seconds for each cell that the first steps took on the mesh before.
     pace = 0.0
     while True:
         begun = time.monotonic()
@@ -119,8 +119,10 @@ def enclose(
         if len(mesh.cells) > GLANCE_CELLS:
             for found, unknowns in glance(pencil, index, budget):
                 known = known.intersect(found)
-                yield Step(known, mesh, level, 2, unknowns, time.monotonic() - begun)
-            if known.width <= budget.width or not budget.affords(time.monotonic() - begun, 0):
+                cost = time.monotonic() - begun
+                pace = cost / len(mesh.cells)
+                yield Step(known, mesh, level, 2, unknowns, cost)
+            if known.width <= budget.width or not budget.affords(3 * cost, 0):
                 return
         order = FIRST_ORDER
         space = TrialSpace(pencil, order)
@@ -141,7 +143,7 @@ def enclose(
             yield Step(known, mesh, level, order, unknowns, cost)
             if known.width <= budget.width:
                 return
-            if order == FIRST_ORDER:
+            if order == FIRST_ORDER and len(mesh.cells) <= GLANCE_CELLS:
                 pace = cost / len(mesh.cells)
             following = None if prospect.shrink is not None else next_order(order, widths, budget.width)
             if following is None:
