@@ -117,12 +117,18 @@ class PairingSpace:
         return numbering.spread(u[:, None])[:, :, 0], numbering.spread(v[:, None])[:, :, 0]
 
     def smallest(self) -> Array:
-        """A function u (nc, n) with small sup_v a(u, v) / (|u| |v|), by inverse iteration; none for singular forms."""
+        """A function u (nc, n) with small sup_v a(u, v) / (|u| |v|), by inverse iteration."""
         numbering = self.trial.numbering
         numbers = numbering.every
         gram = assemble(self.trial.weight, numbers, numbering.size)
+        matrix = assemble(self.matrix, numbers, numbering.size)
         # The published types do not know that ``solve`` takes "T" for the transposed system.
-        factor: Any = splu(assemble(self.matrix, numbers, numbering.size))
+        factor: Any
+        try:
+            factor = splu(matrix)
+        except RuntimeError:
+            # Singular: moved by a hair, the functions that it sends to zero are still the smallest by far.
+            factor = splu(matrix + 1e-10 * (abs(matrix).max() / abs(gram).max()) * gram)
 
         def inverse(load: Array) -> Array:
             back: Array = factor.solve(np.asarray(load), "T")

@@ -108,21 +108,24 @@ def doubt(form: Bilinear, norm: Form, friedrichs: float | None = None) -> float:
     total = np.max(form.diffusion_error * flat**2)
     total += np.max(form.velocity_error * flat * low) + np.max(form.reaction_error * low**2)
     # The polynomials stand for the coefficients on cells that are off by the uncertainty of the mesh.
-    total += 4 * norm.uncertainty * (strongest(form, norm, False, friedrichs) + total)
+    size = strongest(form, norm, False, friedrichs)
+    total += 4 * norm.uncertainty * (size + total)
     error = np.where(form.dirichlet, 0.0, form.facet_error) + 4 * norm.uncertainty * facet_size(form)
-    return up(float(total)) + facet_doubt(norm, error)
+    return up(float(total)) + facet_doubt(norm, error, size)
 
 
-def facet_doubt(norm: Form, error: Array) -> float:
-    """A bound of int error u^2 over facets against |u|^2; infinite where none of those tried is proved."""
+def facet_doubt(norm: Form, error: Array, unit: float) -> float:
+    """A bound of int error u^2 over facets against |u|^2; infinite where none of those tried, shares of ``unit``, is
+    proved."""
     if not np.any(error):
         return 0.0
     none = np.zeros_like(norm.potential[:, :1])
     mass = replace(norm, diffusion=np.zeros_like(norm.diffusion[:, :1]), potential=none, facet=error[:, None])
     pencil = Pencil(norm, replace(mass, diffusion_error=none[:, 0], potential_error=none[:, 0]))
-    for t in (1e9, 1e7, 1e5, 1e3):
+    for share in (1e-9, 1e-7, 1e-5, 1e-3, 1e-2, 1e-1) if math.isfinite(unit) and unit > 0 else ():
+        t = 1 / (share * unit)
         if Prover(pencil, 1, t).proves(t, 0):
-            return 1 / t
+            return up(1 / t)
     return math.inf
 
 

@@ -104,4 +104,4 @@ def trace_bound(norm: Form, facets: NDArray[np.bool_]) -> float:
     if not np.any(facets & ~norm.dirichlet):
         return 0.0
     stiff = 1e-9 * float(np.mean(np.trace(norm.diffusion[:, 0], axis1=1, axis2=2)))
-    return math.sqrt(facet_doubt(norm, np.where(facets & ~norm.dirichlet, stiff, 0.0)) / stiff)
+    return math.sqrt(facet_doubt(norm, np.where(facets & ~norm.dirichlet, stiff, 0.0), 1.0) / stiff)

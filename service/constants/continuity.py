@@ -254,8 +254,9 @@ class Continuity:
         if not np.any(size):
             return 0.0
         # What is there by rounding only has no ratio worth an eigenvalue.
-        least = facet_doubt(first.norm, size)
-        if least <= 1e-6 * oscillation(first.symmetric_part, first.norm):
+        typical = oscillation(first.symmetric_part, first.norm)
+        least = facet_doubt(first.norm, size, typical)
+        if least <= 1e-5 * typical:
             return least
         lower = max((step.enclosure.lower for step in enclose(mesh_at, refine, pencil, 1, budget)), default=-math.inf)
         return up(1 / lower) if lower > 0 else None

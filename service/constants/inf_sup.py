@@ -112,6 +112,8 @@ class Search:
             # K is theta G up to the rounding of theta.
             error = doubt(form, norm, friedrichs) + 4 * SLACK * theta
             if not error < 0.5 * theta:
+                if not budget.affords(6 * (time.monotonic() - begun), len(mesh.facets)):
+                    return
                 size, level = size / 2, level + 1
                 continue
             case = InfSup(discrete.symmetric_part, norm, form, theta, error)
