@@ -27,9 +27,8 @@ SWEEPS = 40
 
 def flow_of(form: Bilinear) -> Array:
     """(nc, m, d) velocity in reference coordinates times the Jacobian: J^-1 b |det J|."""
-    inverse = np.linalg.inv(form.mesh.spans)
-    jacobian = np.abs(np.linalg.det(form.mesh.spans))
-    return np.asarray(np.einsum("cab,cmb->cma", inverse, form.velocity) * jacobian[:, None, None])
+    mesh = form.mesh
+    return np.asarray(np.einsum("cab,cmb->cma", mesh.inverses, form.velocity) * mesh.jacobian[:, None, None])
 
 
 @dataclass(frozen=True)
@@ -48,8 +47,7 @@ class PairingSpace:
         degree = max(degree_of(d, volume), degree_of(d - 1, form.facet.shape[1]))
         reference = scalar_reference(d, self.trial.order, degree)
         image = image_reference(d, self.trial.order, degree)
-        inverse = np.linalg.inv(form.mesh.spans)[:, None]
-        jacobian = np.abs(np.linalg.det(form.mesh.spans))
+        inverse, jacobian = form.mesh.inverses[:, None], form.mesh.jacobian
         metric = size(inverse) @ size(form.diffusion) @ size(inverse.swapaxes(2, 3)) * jacobian[:, None, None, None]
         modes, cells = metric.shape[1], len(metric)
         result = np.einsum("cmab,mabij->cij", metric, tensor(reference.stiffness[:modes]), optimize=True)

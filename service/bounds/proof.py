@@ -16,10 +16,10 @@ LARGEST_RESERVE = 0.3
 """The largest share of a positive form that may be set aside to pay for rounding."""
 
 
-def reaches(form: Form) -> bool:
+def reaches(form: Form, need: float = LARGEST_NEED) -> bool:
     """Whether the cells are small enough for a minorant of the form that is good for something."""
     try:
-        return Minorant(form, 1).shares().need <= LARGEST_NEED
+        return Minorant(form, 1).shares().need <= need
     except TooCoarseError:
         return False
 

@@ -90,6 +90,11 @@ def look(
         size, gap = gap_above(ritz, index)
     useful = gap >= LEAST_GAP
     goal = float(ritz[size if useful else index - 1])
+    if useful and reaches(pencil.at(goal), need=1.0):
+        # Worth a try on cells that are nearly too large: most gaps are proved there, at a fraction of the cost.
+        cut = separate(pencil, ritz, size, orders=1)
+        if cut.count:
+            return Prospect(ratios, functions, cut)
     # Fine cells just for the count pay where sharp bounds follow on the coarse ones.
     fine = reachable(pencil, pencil_on, refined, goal, cells if sharp else 0)
     if fine is None:

@@ -26,7 +26,7 @@ FIRST_ORDER = 3
 COUNT_SECONDS = 8e-5
 """Seconds that a search for a counted bound takes for each cell, for the lowest order; more only gives up earlier."""
 
-FIRST_SIZE = 0.5
+FIRST_SIZE = 0.33
 """Longest edges of the first mesh, in mesh units (the diameter is between 1 and 2)."""
 
 GLANCE_CELLS = 3000
@@ -151,7 +151,7 @@ def enclose(
             growth = (following / order) ** 3
             # The first step's look at the spectrum is not taken again: its functions are where the next ones start.
             ahead = min(cost, 2 * (time.monotonic() - looked)) * growth
-            if not budget.affords(ahead, int(unknowns * growth)):
+            if not budget.affords(ahead, int(1.1 * unknowns * (following / order) ** 2)):
                 return
             begun = looked = time.monotonic()
             used = max(cut.count, index)

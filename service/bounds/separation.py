@@ -70,14 +70,15 @@ def gap_above(ritz: Array, index: int) -> tuple[int, float]:
     return index + pick, float(gaps[pick])
 
 
-def separate(pencil: Pencil, ritz: Array, size: int) -> Separation:
+def separate(pencil: Pencil, ritz: Array, size: int, orders: int = 3) -> Separation:
     """Proves a cut, for the true forms, between the ratios ``size`` and ``size`` + 1, given their Ritz values.
 
     pencil : on a mesh fine enough for minorants at ritz[size].
+    orders : how many orders of minorants are tried.
     """
     below, above = float(ritz[size - 1]), float(ritz[size])
-    orders = (1, 2, 3) if len(pencil.mesh.cells) > 1500 else (2, 3, 1)
-    for order in (3, 4, 5) if above - below < SMALL_GAP * abs(above) else orders:
+    tried = (1, 2, 3) if len(pencil.mesh.cells) > 1500 else (2, 3, 1)
+    for order in ((3, 4, 5) if above - below < SMALL_GAP * abs(above) else tried)[:orders]:
         prover = Prover(pencil, order, above)
         for part in (0.8, 0.5, 0.25):
             rho = below + part * (above - below)

@@ -49,15 +49,15 @@ class Form:
         volume = degree_of(d, max(self.diffusion.shape[1], self.potential.shape[1]))
         return max(volume, degree_of(d - 1, self.facet.shape[1]) if d > 1 else 0)
 
-    @cached_property
+    @property
     def jacobian(self) -> Array:
         """(nc,) absolute determinant of the map from the unit simplex."""
-        return np.asarray(np.abs(np.linalg.det(self.mesh.spans)))
+        return self.mesh.jacobian
 
     @cached_property
     def gradient_metric(self) -> Array:
         """(nc, m, d, d): int_T G grad u . grad v = sum over modes and directions of int psi_m d_a u d_b v."""
-        inverse = np.linalg.inv(self.mesh.spans)[:, None]
+        inverse = self.mesh.inverses[:, None]
         metric = inverse @ self.diffusion @ inverse.swapaxes(2, 3) * self.jacobian[:, None, None, None]
         return np.asarray((metric + metric.swapaxes(2, 3)) / 2)
 
@@ -124,7 +124,7 @@ class Form:
         measured in the metric of G, the rounding of the products in that of M, all with absolute values entry by entry.
         """
         d, spans = self.mesh.dimension, self.mesh.spans
-        inverse = np.linalg.inv(spans)
+        inverse = self.mesh.inverses
         reach = np.abs(inverse) @ np.abs(spans)
         error = 32 * d**2 * UNIT * np.sum(reach**2, axis=(1, 2))
         if np.any(self.diffusion):

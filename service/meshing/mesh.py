@@ -1,6 +1,7 @@
 """A simplicial mesh whose element shapes are known to full relative accuracy."""
 
 from dataclasses import dataclass, field
+from functools import cached_property
 
 import numpy as np
 from numpy.typing import NDArray
@@ -59,6 +60,16 @@ class Mesh:
         """Memberships of every cell in no region."""
         if not self.regions.size:
             object.__setattr__(self, "regions", np.empty((len(self.cells), 0), dtype=bool))
+
+    @cached_property
+    def inverses(self) -> NDArray[np.float64]:
+        """(nc, d, d) inverses of the spans."""
+        return np.asarray(np.linalg.inv(self.spans))
+
+    @cached_property
+    def jacobian(self) -> NDArray[np.float64]:
+        """(nc,) absolute determinants of the spans."""
+        return np.asarray(np.abs(np.linalg.det(self.spans)))
 
     @property
     def dimension(self) -> int:
