@@ -12,7 +12,7 @@ with a minorant N of 2 theta a(u, u) - (theta^2 + t) |u|^2 in those moments, |Au
     [[N, g^T], [g, -M]]   has no more negative eigenvalues than there are functions phi_i.
 """
 
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 from functools import cached_property
 
 import numpy as np
@@ -23,7 +23,7 @@ from service.bounds.condensed import Numbering, assemble
 from service.bounds.inertia import SingularPivotError, factorise, negatives, smallest_eigenvalue_bound
 from service.bounds.minorant import Minorant, TooCoarseError, eliminate_cells
 from service.bounds.pairing import flow_of
-from service.bounds.proof import LARGEST_RESERVE
+from service.bounds.proof import LARGEST_RESERVE, Prover
 from service.bounds.ritz import TrialSpace
 from service.bounds.rounding import gamma
 from service.elements.advection import ADVECTION_ERROR, PairingReference, pairing_reference
@@ -171,24 +171,17 @@ class InfSup:
         if form.uncertainty > LARGEST_RESERVE or not self.doubt < 0.5 * self.theta:
             return False
         form = form.moved(-1.0)
-        scale = max(float(np.mean(np.abs(form.potential[:, 0]))), float(np.mean(np.trace(form.diffusion[:, 0].T))))
-        positive = replace(
-            form, potential=np.full((len(form.potential), 1), scale), facet=np.zeros((len(form.facet), 1))
-        )
+        reserves = Prover(self.pencil, self.order, t)
+        (ground, allowance), below = reserves.ground, self.gram_bound
+        if ground <= 0 or below <= 0:
+            return False
+        taken = 2 * allowance
         try:
-            above = Minorant(positive, self.order).condensed()
-            if above is None:
-                return False
-            ground = smallest_eigenvalue_bound(above[0]) - above[1]
-            below = self.gram_bound
-            if ground <= 0 or below <= 0:
-                return False
-            taken = 2 * above[1]
             for _ in range(2):
                 reserve, enlarged = 1.5 * taken / ground, 1.5 * taken / below
                 if reserve > LARGEST_RESERVE or enlarged > LARGEST_RESERVE:
                     return False
-                found = self.bordered(form.plus(positive, -reserve), enlarged, bounded=True)
+                found = self.bordered(form.plus(reserves.positive, -reserve), enlarged, bounded=True)
                 if found is None:
                     return False
                 factors = factorise(found[0])

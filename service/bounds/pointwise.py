@@ -13,6 +13,7 @@ from numpy.typing import NDArray
 from service.bounds.proof import Prover
 from service.bounds.rounding import UNIT, up
 from service.forms.bilinear import Bilinear
+from service.forms.coefficients import widened
 from service.forms.form import Form, Pencil
 from service.forms.modes import coefficient_modes, control_points
 
@@ -25,11 +26,6 @@ SLACK = 1e-13
 def controls(modes: Array, dimension: int) -> Array:
     """Control points (n, c, ...) of polynomials given by modes (n, m, ...)."""
     return np.asarray(np.einsum("cm,nm...->nc...", control_points(dimension, modes.shape[1]), modes))
-
-
-def widened(modes: Array, width: int) -> Array:
-    """Modes (n, m, ...) with zeros appended."""
-    return np.pad(modes, [(0, 0), (0, width - modes.shape[1])] + [(0, 0)] * (modes.ndim - 2))
 
 
 def slack(gradient: Array) -> float:

@@ -42,8 +42,8 @@ class Approximation:
 
 
 def widened(modes: Array, width: int) -> Array:
-    """Mode array with zeros appended."""
-    return np.pad(modes, ((0, 0), (0, width - modes.shape[1])))
+    """Mode array (n, m, ...) with zeros appended."""
+    return np.pad(modes, [(0, 0), (0, width - modes.shape[1])] + [(0, 0)] * (modes.ndim - 2))
 
 
 def user_points(mesh: Mesh, points: Array) -> Array:
