@@ -103,10 +103,11 @@ class Tally:
 def describe(request: Request, question: Question, value: Enclosure) -> JSON:
     """One constant as the result shows it."""
     known = math.isfinite(value.width)
+    shown = value.lower_by.startswith("Ritz") or not math.isfinite(value.upper)
     return {
         "lower": float(value.lower) if math.isfinite(value.lower) else None,
         "upper": float(value.upper) if math.isfinite(value.upper) else None,
-        "best": float(value.lower if value.lower_by.startswith("Ritz") else value.upper),
+        "best": float(value.lower if shown and math.isfinite(value.lower) else value.upper),
         "relative_width": float(value.width) if known else None,
         "target_met": bool(value.width <= request.tolerance),
         "rigour": "guaranteed",

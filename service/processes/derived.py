@@ -63,7 +63,8 @@ def flow_numbers(request: Request, mesh: Mesh) -> JSON:
     least = np.linalg.eigvalsh((tensor + tensor.swapaxes(2, 3)) / 2)[:, :, 0].min(axis=1) - form.diffusion_error
     speed = np.linalg.norm(controls(form.velocity, 2), axis=2).max(axis=1) + form.velocity_error
     reaction = np.abs(controls(form.reaction, 2)).max(axis=1) + form.reaction_error
-    if not np.all(least > 0):
+    # On cells that are too large to bound the coefficients there is nothing to say yet.
+    if not (np.all(least > 0) and np.all(np.isfinite(speed)) and np.all(np.isfinite(reaction))):
         return {}
     size = float(np.linalg.norm(np.ptp(request.domain.points, axis=0)))
     result: JSON = {}

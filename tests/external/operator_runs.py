@@ -1,5 +1,6 @@
 """Runs of the process ``constants`` on whole problems, and their enclosures as intervals."""
 
+import json
 import math
 import time
 from collections.abc import Sequence
@@ -28,6 +29,7 @@ def ask_problem(problem: JSON, constants: Sequence[str], tolerance: float, secon
     known: dict[Key, Interval] = {}
 
     def listen(percent: float, message: str, so_far: JSON) -> None:
+        json.dumps(so_far, allow_nan=False)  # it is sent as JSON
         for key, (lower, upper) in intervals(so_far).items():
             before = known.get(key, WHOLE)
             assert before[0] <= lower, (key, before, (lower, upper))
@@ -37,6 +39,7 @@ def ask_problem(problem: JSON, constants: Sequence[str], tolerance: float, secon
     process = PROCESSES["constants"]
     begun = time.monotonic()
     result = process.run(process.accept(inputs), listen)
+    json.dumps(result, allow_nan=False)
     answer = Answer(result, time.monotonic() - begun)
     assert {key: intervals(result)[key] for key in known} == known
     return answer

@@ -14,6 +14,13 @@ FREE: list[JSON] = []
 BOTTOM: list[JSON] = [{"name": "bottom", "on": {"segment": [[0, 0], [1, 0]]}, "condition": "dirichlet"}]
 HELD: list[JSON] = [{"name": "rim", "on": "remainder", "condition": "dirichlet"}]
 
+FLOW: JSON = {
+    "samples": {
+        "points": [[0, 0], [1, 0], [1, 1], [0, 1], [0.4, 0.5]],
+        "vectors": [[0.2, 0], [0.3, 0], [0.3, 0.1], [0.2, 0], [0.26, 0]],
+    }
+}
+
 CASES: dict[str, tuple[JSON, tuple[str, ...]]] = {
     "a trace seen by few functions": (
         {
@@ -38,6 +45,25 @@ CASES: dict[str, tuple[JSON, tuple[str, ...]]] = {
             "norm": {"kind": "diffusion"},
         },
         ("coercivity", "continuity", "inf_sup"),
+    ),
+    "regions, samples, exchange": (
+        {
+            "domain": {
+                **SQUARE,
+                "regions": [{"name": "left", "shape": {"rectangle": {"corner": [0, 0], "size": [0.4, 1]}}}],
+            },
+            "boundary": [
+                *BOTTOM,
+                {"name": "top", "on": {"segment": [[0, 1], [1, 1]]}, "condition": "robin", "exchange": 0.4},
+            ],
+            "operator": {
+                "diffusion": [{"region": "left", "value": 6}, {"value": "1.5+0.3*x"}],
+                "velocity": FLOW,
+                "reaction": "0.2*exp(-x/2)",
+            },
+            "norm": {"kind": "diffusion"},
+        },
+        ("coercivity", "inf_sup", "continuity", "decay_rate"),
     ),
     "a flow that expands": (
         {
