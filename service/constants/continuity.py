@@ -188,12 +188,7 @@ class Continuity:
         """The form above against the norm."""
         discrete = Discrete(self.request, mesh)
         norm, whole = discrete.norm, discrete.symmetric_part
-        beside = self.beside(discrete)
-        body = replace(
-            whole,
-            facet=whole.facet - beside.facet,
-            facet_error=whole.facet_error + beside.facet_error,
-        )
+        body = whole.plus(self.beside(discrete), -1.0)
         form = bilinear(discrete)
         lower = norm.moved(-1.0)
         metric = np.linalg.eigvalsh(lower.diffusion_floor)[:, 0]
