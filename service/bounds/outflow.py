@@ -38,7 +38,7 @@ def balance(mesh: Mesh, open_facets: NDArray[np.bool_], flows: Array, targets: A
     beyond = np.where(inner, second, cells)  # the outside is one more cell
     ways = np.flatnonzero(passable)
     graph = coo_matrix((np.ones(len(ways)), (first[ways], beyond[ways])), shape=(cells + 1, cells + 1)).tocsr()
-    largest = int(np.argmax(np.abs(np.linalg.det(mesh.spans))))
+    largest = int(np.argmax(mesh.jacobian))
     root = cells if np.any(open_facets & ~inner) else largest
     order, parent = breadth_first_order(graph, root, directed=False)
     child = order[1:]

@@ -170,7 +170,7 @@ def enclose(
 
 def equilaterals(mesh: Mesh, size: float) -> float:
     """How many equilateral triangles of a size the mesh's area takes; about what a mesh of that size has at least."""
-    return float(np.sum(np.abs(np.linalg.det(mesh.spans)))) / 2 / (math.sqrt(3) / 4 * size**2)
+    return float(np.sum(mesh.jacobian)) / 2 / (math.sqrt(3) / 4 * size**2)
 
 
 def count_below(pencil: Pencil, known: Enclosure, index: int, order: int, budget: Budget) -> Enclosure:

@@ -18,27 +18,6 @@ Array = NDArray[np.float64]
 LARGEST_ERROR = 0.1
 """Largest relative error of the forms, from the shapes of cells, with which anything is still concluded."""
 
-FIRST_ORDER = 3
-"""Order of the first look at the spectrum."""
-
-LOOK_AHEAD = 24
-"""How many eigenvalues beyond the wanted one are searched for a gap before counting alone must do."""
-
-COUNT_SECONDS = 8e-5
-"""Seconds that a search for a counted bound takes for each cell, for the lowest order; more only gives up earlier."""
-
-NEAR = 0.2
-"""Least distance of a shift from the first ratio, relative to it."""
-
-FIRST_SIZE = 0.5
-"""Longest edges of the first mesh, in mesh units (the diameter is between 1 and 2)."""
-
-GLANCE_CELLS = 3000
-"""Cells from which a mesh is first looked at with the lowest orders, to have something early."""
-
-MINORANT_CELLS = 6000
-"""Cells up to which a mesh is refined just to cut the spectrum."""
-
 
 def sharpen(pencil: Pencil, index: int, cut: Separation, order: int, functions: Array, ratios: Array) -> Enclosure:
     """Enclosure of tau_index from trial functions of one order and fluxes of the same order."""

@@ -54,9 +54,12 @@ def with_parts(pencil: Callable[[Mesh], Pencil], answer: Callable[[Enclosure], E
     """The first ratio of a pencil of an operator against a norm or a mass, or a function of it."""
 
     def narrow(mesh_at: MeshAt, budget: Budget) -> Iterator[Step]:
-        known = UNKNOWN
+        known, mesh = UNKNOWN, None
         for step in from_ratio(pencil)(mesh_at, budget):
-            known = known.intersect(step.enclosure).intersect(by_parts(pencil(step.mesh)))
+            known = known.intersect(step.enclosure)
+            if step.mesh is not mesh:
+                mesh = step.mesh
+                known = known.intersect(by_parts(pencil(mesh)))
             better = replace(step, enclosure=answer(known))
             yield better
             if better.enclosure.width <= budget.width:

@@ -203,16 +203,14 @@ class Continuity:
 
     def stray(self, discrete: Discrete, theta: float) -> tuple[np.ndarray, np.ndarray]:
         """(nc,) largest |c - div b - theta w0| (convective form; c in conservative form), and the error."""
-        conserved = 1.0 if self.request.operator.form == "conservative" else 0.0
-        part = discrete.potential(conserved - 1.0)
+        part = discrete.potential(discrete.conserved - 1.0)
         modes = part.modes.copy()
         modes[:, 0] -= theta * discrete.norm.potential[:, 0]
         return np.abs(controls(modes, 2)).max(axis=1), part.error + 1e-15 * np.abs(theta)
 
     def beside(self, discrete: Discrete) -> Form:
         """The facet terms of -int u b . grad v + ... that are left when the flow is moved to v, as a form."""
-        conserved = 1.0 if self.request.operator.form == "conservative" else 0.0
-        terms = discrete.facet_terms(1.0, 1.0 - conserved).times(1 / discrete.mesh.unit)
+        terms = discrete.facet_terms(1.0, 1.0 - discrete.conserved).times(1 / discrete.mesh.unit)
         zero = constant_form(discrete.mesh, discrete.dirichlet)
         return replace(zero, facet=terms.modes, facet_error=terms.error)
 

@@ -76,9 +76,7 @@ class Search:
             for step in with_parts(self.pencil)(mesh_at, budget if theta is None else only):
                 known = known.intersect(self.simple(step.enclosure, step.mesh))
                 yield replace(step, enclosure=known)
-        if known.width <= budget.width:
-            return
-        if theta is None:
+        if theta is None or known.width <= budget.width:
             return
         friedrichs: float | None = None
         if self.request.norm.kind != "h1":

@@ -50,9 +50,8 @@ def bilinear(discrete: Discrete, skew: bool = False) -> Bilinear:
         width = max(part.modes.shape[1] for part in parts)
         flow = np.stack([widened(part.modes, width) for part in parts], axis=2)
         flow_error = np.hypot(parts[0].error, parts[1].error)
-    conserved = 1.0 if discrete.operator.form == "conservative" else 0.0
-    reaction = discrete.potential(discrete.skew_share if skew else conserved)
-    facet = discrete.facet_terms(0.5, -discrete.skew_share) if skew else discrete.facet_terms(0.0, -conserved)
+    flow_share, share = (0.5, discrete.skew_share) if skew else (0.0, discrete.conserved)
+    reaction, facet = discrete.potential(share), discrete.facet_terms(flow_share, -share)
     return Bilinear(
         discrete.mesh,
         discrete.dirichlet,

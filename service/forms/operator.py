@@ -182,10 +182,15 @@ class Discrete:
         found = self.divergence() if divergence else None
         return total if found is None else total + found.times(divergence)
 
-    @cached_property
+    @property
+    def conserved(self) -> float:
+        """Factor of div b, and minus that of [b . n], in the form itself: 1 where it is conservative."""
+        return 1.0 if self.operator.form == "conservative" else 0.0
+
+    @property
     def skew_share(self) -> float:
-        """Factor of div b, and minus that of [b . n], in the symmetric part."""
-        return -0.5 if self.operator.form == "convective" else 0.5
+        """The same factor in the symmetric part."""
+        return self.conserved - 0.5
 
     @cached_property
     def symmetric_part(self) -> Form:

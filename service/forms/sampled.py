@@ -93,9 +93,8 @@ class Carrier:
         _, outside = self._values(user_points(mesh, mesh.points))
         divergence = Discrete(self.request, mesh).divergence()
         assert divergence is not None
-        areas = np.abs(np.linalg.det(mesh.spans))
         largest = float(np.max(np.abs(divergence.modes[:, 0])))
-        mean = float(np.sqrt(np.average(divergence.modes[:, 0] ** 2, weights=areas)))
+        mean = float(np.sqrt(np.average(divergence.modes[:, 0] ** 2, weights=mesh.jacobian)))
         unit = f"1/{self.request.time_unit}"
         remarks = [
             f"velocity: {len(self.samples.points)} samples, interpolated linearly on {len(mesh.cells)} triangles. The "

@@ -57,6 +57,8 @@ def flow_numbers(request: Request, mesh: Mesh) -> JSON:
     domain's bounding box: mesh Peclet number |b| h / (2 k), domain Peclet number |b| L / k, Damkoehler numbers
     |c| L^2 / k and |c| L / |b|.
     """
+    if request.operator.velocity is None and all(value.exact == 0 for value in request.operator.reaction.values):
+        return {}
     form = bilinear(Discrete(request, mesh))
     unit = mesh.unit
     tensor = controls(form.diffusion, 2)
